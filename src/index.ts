@@ -1,0 +1,1 @@
+export { default, initSync } from "../bindings/loader.js";
