@@ -6,3 +6,4 @@ export function isFused(): bool { return ASC_FEATURE_RELAXED_SIMD; }
 export { permuteGraph, releaseHalves } from "./symbolic/halves";
 export { eliminationTree, postorder } from "./symbolic/tree";
 export { columnCounts } from "./symbolic/counts";
+export { blocksOf, releaseBlocks } from "./ordering/compress";
