@@ -3,10 +3,11 @@ export {
   allocate, release, setMemoryLimit, memoryLimit, memoryUsed, memoryPeak, resetMemoryPeak, memoryCapacity,
 } from "./memory/heap";
 export function isFused(): bool { return ASC_FEATURE_RELAXED_SIMD; }
+export { blocksOf, releaseBlocks } from "./ordering/compress";
+export { orderingBegin, orderingAdvance, orderingFinish, orderingRelease } from "./ordering/ordering";
 export { permuteGraph, releaseHalves } from "./symbolic/halves";
 export { eliminationTree, postorder } from "./symbolic/tree";
 export { columnCounts } from "./symbolic/counts";
-export { blocksOf, releaseBlocks } from "./ordering/compress";
 export { multiply } from "./dense/multiply";
 export { multiplyTransposed, multiplyTransposedLower } from "./dense/multiply-transposed";
 export { rankUpdateLower } from "./dense/rank-update";
