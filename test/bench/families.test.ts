@@ -1,26 +1,16 @@
-import { CholeskyDecomposition, Matrix } from "ml-matrix";
+import { Matrix } from "ml-matrix";
 import { describe, expect, test } from "vitest";
 import { chain } from "../../bench/families/chain.js";
 import { grid } from "../../bench/families/grid.js";
-import { type Information, information } from "../../bench/families/information.js";
+import { information } from "../../bench/families/information.js";
 import { patrol } from "../../bench/families/patrol.js";
 import { type PlanarPose, pointFromPose, relativePlanarPose, relativeSpatialPose, type SpatialPose } from "../../bench/families/poses.js";
 import { random, xoshiro128 } from "../../bench/families/random.js";
 import type { Stream } from "../../bench/families/stream.js";
 import { type FamilyName, families } from "../../bench/families.js";
+import { denseOf, isPositiveDefinite } from "../support/dense.js";
 
 const names = Object.keys(families) as FamilyName[];
-
-function dense({ order, columnPointers, rowIndices, values }: Information): Matrix {
-  const full = Matrix.zeros(order, order);
-  for (let j = 0; j < order; j += 1) {
-    for (let p = columnPointers[j]!; p < columnPointers[j + 1]!; p += 1) {
-      full.set(rowIndices[p]!, j, values[p]!);
-      full.set(j, rowIndices[p]!, values[p]!);
-    }
-  }
-  return full;
-}
 
 /** Σ Jᵀ R⁻¹ J and Σ Jᵀ R⁻¹ r by dense products of the whole design matrix. */
 function byDesignMatrix(stream: Stream): { matrix: Matrix; vector: Matrix } {
@@ -70,13 +60,13 @@ describe.each(names)("%s", (name) => {
     const stream = families[name].make(states, 5);
     const found = information(stream);
     const { matrix, vector } = byDesignMatrix(stream);
-    const full = dense(found);
+    const full = denseOf(found);
     // Sums of at most a few hundred products in two orders.
     const scale = matrix.max() * 1e-13;
     expect(Matrix.sub(full, matrix).abs().max()).toBeLessThanOrEqual(scale);
     const vectorScale = vector.clone().abs().max() * 1e-11;
     for (let i = 0; i < found.order; i += 1) expect(Math.abs(found.vector[i]! - vector.get(i, 0))).toBeLessThanOrEqual(vectorScale);
-    expect(new CholeskyDecomposition(full).isPositiveDefinite()).toBe(true);
+    expect(isPositiveDefinite(full)).toBe(true);
     expect(found.blockSizes.reduce((sum, d) => sum + d, 0)).toBe(found.order);
     for (let j = 0; j < found.order; j += 1) {
       const rows = found.rowIndices.subarray(found.columnPointers[j], found.columnPointers[j + 1]);
@@ -96,7 +86,7 @@ describe.each(names)("%s", (name) => {
         expect(new Set(measurement.states).size).toBe(measurement.states.length);
         expect(again.measurement(k)).toEqual(measurement);
       }
-      expect(new CholeskyDecomposition(dense(information(stream, s + 1))).isPositiveDefinite()).toBe(true);
+      expect(isPositiveDefinite(denseOf(information(stream, s + 1)))).toBe(true);
     }
     const last = stream.step(stream.steps - 1);
     expect([last.lastState, last.lastMeasurement]).toEqual([stream.states, stream.measurements]);
@@ -105,7 +95,7 @@ describe.each(names)("%s", (name) => {
 });
 
 test("the grid is the five-point Laplacian with fixed borders", () => {
-  const matrix = dense(information(grid(3, 4)));
+  const matrix = denseOf(information(grid(3, 4)));
   for (let a = 0; a < 12; a += 1) {
     for (let b = 0; b < 12; b += 1) {
       const apart = Math.abs(Math.floor(a / 4) - Math.floor(b / 4)) + Math.abs((a % 4) - (b % 4));
