@@ -16,3 +16,5 @@ for (const target of targets) {
 const names = { simd: "kernel_bg", relaxed: "kernel_relaxed_bg", debug: "kernel_debug" };
 for (const target of targets) copyFileSync(`build/bindings/${names[target]}.wasm`, `bindings/${names[target]}.wasm`);
 execFileSync("npx", ["tsc", "-p", "."], { stdio: "inherit" });
+// The published schema of the measurement log lies beside the code that reads it.
+copyFileSync("src/log/log.schema.json", "build/src/log/log.schema.json");

@@ -1,5 +1,6 @@
 export { type JacobianWarning, type OwnFunction, ownFunction } from "./own-function.js";
 export type { Quantity } from "./quantities.js";
+export type { Reading, StateDeclaration } from "./reading.js";
 export type { ReadingForm, ReadingKind, Setup } from "./reading-form.js";
 export { findForm, type ReadingKindName, readingKinds } from "./reading-kinds.js";
 export { cauchy, huber, type RobustWeight, tukey } from "./robust.js";

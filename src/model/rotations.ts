@@ -22,9 +22,13 @@ export function conjugate([w, x, y, z]: Quaternion): Quaternion {
   return [w, -x, -y, -z];
 }
 
-/** Scaled to unit length, the sign chosen so that w ≥ 0. */
+/** A length this near 1 is rounding: scaling again would only turn last bits over. */
+const unitRounding = 4 * Number.EPSILON;
+
+/** Scaled to unit length, the sign chosen so that w ≥ 0. Doing it twice gives the same bits as once. */
 export function normalizeQuaternion([w, x, y, z]: Quaternion): Quaternion {
-  const scale = (w < 0 ? -1 : 1) / Math.hypot(w, x, y, z);
+  const length = Math.hypot(w, x, y, z);
+  const scale = (w < 0 ? -1 : 1) / (Math.abs(length - 1) <= unitRounding ? 1 : length);
   return [w * scale, x * scale, y * scale, z * scale];
 }
 
