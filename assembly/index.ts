@@ -17,3 +17,14 @@ export { solveLower, solveLowerMany, solveLowerTransposed, solveLowerTransposedM
 export { inverseOfProduct, inverseScratch } from "./dense/inverse-of-product";
 export { axpy, dot, subtractProduct, subtractTransposedProduct } from "./dense/vector";
 export { mirror, transposeInto } from "./dense/transpose";
+export { analysisBegin, analysisAdvance, analysisProgress, analysisFinish, analysisRelease } from "./symbolic/analysis";
+export { releaseSymbolic as symbolicRelease } from "./symbolic/symbolic";
+export {
+  symbolicOrder, symbolicNonzeros, symbolicFlops, symbolicSupernodes, symbolicBlocks, symbolicOrdering, symbolicBytes, factorBytes, inverseBytes,
+} from "./symbolic/facts";
+export { factorCreate, factorRelease, factorBegin, factorAdvance, factorProgress, factorPivot, logDeterminant } from "./factor/cholesky";
+export { solveBegin, solveAdvance, solveProgress, solveRelease } from "./solve/solve";
+export { inverseEntries } from "./solve/entries";
+export { inverseBegin, inverseAdvance, inverseProgress, inverseRelease, inverseDiagonal } from "./inverse/selected-inverse";
+export { inverseOnMatrix, inverseOnFactor, inverseFactorColumns, factorEntries } from "./inverse/pattern";
+export { reciprocalCondition } from "./condition";

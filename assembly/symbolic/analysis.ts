@@ -4,7 +4,7 @@
 import { allocateArray, release } from "../memory/heap";
 import { i32At, setI32 } from "../memory/access";
 import { OK, OUT_OF_MEMORY, RUNNING, TOO_LARGE } from "../memory/status";
-import { Blocks, compress, releaseBlocks } from "../ordering/compress";
+import { Blocks, blocksOf, releaseBlocks } from "../ordering/compress";
 import {
   GIVEN, OrderingJob, orderingAdvance, orderingBegin, orderingKind, orderingProgress, orderingRelease, orderingResult,
 } from "../ordering/ordering";
@@ -81,7 +81,7 @@ export function analysisAdvance(job: Analysis, budget: f64): i32 {
   let spent: f64 = 0;
   while (spent < budget && job.phase != FINISHED) {
     if (job.phase == COMPRESS) {
-      job.blocks = compress(job.n, job.columnStart, job.rowIndex, job.blockCount, job.blockSizes);
+      job.blocks = blocksOf(job.n, job.columnStart, job.rowIndex, job.blockSizes, job.blockCount);
       if (!job.blocks) return OUT_OF_MEMORY;
       spent += <f64>i32At(job.columnStart, job.n) * UNITS_RECORDS;
       job.phase = ORDER;
