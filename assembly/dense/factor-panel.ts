@@ -2,7 +2,7 @@
  *  panel: rows × width, rows ≥ width, column-major, leading dimension ld; entries above the diagonal of the top square are not
  *  touched. Columns [0, from) must be done; columns [from, to) are done on return. So long panels are cut by columns.
  *  floors f64[width]: a pivot ≤ floors[j], or NaN, stops the work.
- *  Returns 0, or 1 + j of the pivot that stopped it; columns [from, to) are then undefined.
+ *  Returns 0, or 1 + j of the pivot that stopped it; the pivot then stands in its place, the rest of [from, to) is undefined.
  *  Cost of all columns: width³/3 + (rows − width)·width² flops. Entry (i, j) takes away its terms in the order p = 0, 1, … and is
  *  multiplied by the reciprocal of the pivot's root last, however the columns are cut.
  *  Source: Ng, Peyton (1993), "Block Sparse Cholesky Algorithms on Advanced Uniprocessor Computers", SIAM J. Sci. Comput. 14(5);
@@ -26,6 +26,7 @@ function factorTile(w: i32, at: usize, ld: usize, floors: usize): i32 {
   if (w == 1) return 0;
   const l10 = load<f64>(at, 8) * r0, p1 = load<f64>(at + ld, 8) - l10 * l10;
   store<f64>(at, l10, 8);
+  store<f64>(at + ld, p1, 8);
   if (!(p1 > load<f64>(floors, 8))) return 2;
   const d1 = Math.sqrt(p1), r1 = 1 / d1;
   store<f64>(at + ld, d1, 8);
@@ -35,6 +36,7 @@ function factorTile(w: i32, at: usize, ld: usize, floors: usize): i32 {
   const p2 = load<f64>(at + 2 * ld, 16) - l20 * l20 - l21 * l21;
   store<f64>(at, l20, 16);
   store<f64>(at + ld, l21, 16);
+  store<f64>(at + 2 * ld, p2, 16);
   if (!(p2 > load<f64>(floors, 16))) return 3;
   const d2 = Math.sqrt(p2), r2 = 1 / d2;
   store<f64>(at + 2 * ld, d2, 16);
@@ -46,6 +48,7 @@ function factorTile(w: i32, at: usize, ld: usize, floors: usize): i32 {
   store<f64>(at, l30, 24);
   store<f64>(at + ld, l31, 24);
   store<f64>(at + 2 * ld, l32, 24);
+  store<f64>(at + 3 * ld, p3, 24);
   if (!(p3 > load<f64>(floors, 24))) return 4;
   const d3 = Math.sqrt(p3);
   store<f64>(at + 3 * ld, d3, 24);

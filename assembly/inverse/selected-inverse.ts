@@ -4,15 +4,15 @@
  *  need take room; what is kept is the panels of Z, or just its diagonal.
  *  Sources: Takahashi, Fagan, Chen (1973), "Formation of a sparse bus impedance matrix and its application to short circuit study";
  *  Erisman, Tinney, "On computing certain elements of the inverse of a sparse matrix", Comm. ACM 18 (1975). */
-import { allocateArray, release } from "../memory/heap";
+import { allocate, allocateArray, release } from "../memory/heap";
 import { atF64, f64At, i32At, setF64, u32At } from "../memory/access";
 import { OK, RUNNING } from "../memory/status";
-import { inverseOfProduct } from "../dense/inverseOfProduct";
-import { mirror } from "../dense/mirror";
-import { NEGATE, SUBTRACT } from "../dense/modes";
+import { inverseOfProduct, inverseScratch } from "../dense/inverse-of-product";
+import { mirror } from "../dense/transpose";
+import { NEGATE, SUBTRACT } from "../dense/mode";
 import { multiply } from "../dense/multiply";
-import { multiplyTransposedLower } from "../dense/multiplyTransposed";
-import { solveRight } from "../dense/triangular";
+import { multiplyTransposedLower } from "../dense/multiply-transposed";
+import { solveRight } from "../dense/solve-right";
 import { Factor } from "../factor/cholesky";
 import { panelFlops } from "../symbolic/structure";
 import { Symbolic } from "../symbolic/symbolic";
@@ -34,6 +34,8 @@ export class SelectedInverse {
   /** f64[frontEntries]: the stacks; f64: M of the largest panel. Given back at the end. */
   fronts: usize;
   m: usize;
+  /** inverseScratch(widest) bytes. */
+  scratch: usize;
   /** Supernodes still to do, what is next for the present one, and from which row. */
   left: i32;
   phase: i32;
@@ -54,9 +56,10 @@ export function inverseBegin(factor: Factor, keepPanels: bool): SelectedInverse 
   z.diagonal = allocateArray(<f64>s.n, 3);
   z.fronts = allocateArray(s.frontEntries, 3);
   z.m = allocateArray(s.largestBelow, 3);
+  z.scratch = allocate(inverseScratch(s.widest));
   if (keepPanels) z.panels = allocateArray(s.panelEntries, 3);
   z.left = s.supernodes;
-  if (!z.diagonal || !z.fronts || !z.m || (keepPanels && !z.panels)) { inverseRelease(z); return null; }
+  if (!z.diagonal || !z.fronts || !z.m || !z.scratch || (keepPanels && !z.panels)) { inverseRelease(z); return null; }
   return z;
 }
 
@@ -65,6 +68,7 @@ export function inverseRelease(z: SelectedInverse): void {
   release(z.diagonal);
   release(z.fronts);
   release(z.m);
+  release(z.scratch);
   release(changetype<usize>(z));
 }
 
@@ -96,12 +100,12 @@ export function inverseAdvance(z: SelectedInverse, budget: f64): i32 {
       spent += 2 * <f64>rows * <f64>width * <f64>below / FLOPS_PER_UNIT;
       z.from += rows;
     }
-    inverseOfProduct(width, panel, lead, front, lead);
+    inverseOfProduct(width, panel, lead, front, lead, z.scratch);
     if (below) multiplyTransposedLower(width, below, z.m, leadM, frontBelow, lead, front, lead, SUBTRACT);
     spent += <f64>width * <f64>width * <f64>(below + width) / FLOPS_PER_UNIT;
     for (let j = 0, column = i32At(s.first, t); j < width; ++j) setF64(z.diagonal, i32At(s.order, column + j), f64At(front, j * (lead + 1)));
     if (z.panels) {
-      mirror(width, front, lead);
+      if (below) mirror(width, front, lead);
       memory.copy(z.panels + (<usize>u32At(s.panel, t) << 3), front, <usize>(width * lead) << 3);
     }
     z.done += panelFlops(width, below);
@@ -109,8 +113,10 @@ export function inverseAdvance(z: SelectedInverse, budget: f64): i32 {
   }
   release(z.fronts);
   release(z.m);
+  release(z.scratch);
   z.fronts = 0;
   z.m = 0;
+  z.scratch = 0;
   return OK;
 }
 

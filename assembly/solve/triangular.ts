@@ -5,9 +5,10 @@
  *  Source: George, Liu, "Computer Solution of Large Sparse Positive Definite Systems" (1981), ch. 2; Ng, Peyton (1993). */
 import { addF64, atF64, f64At, i32At, setF64, u32At } from "../memory/access";
 import { multiply } from "../dense/multiply";
-import { solveRight, solveRightTransposed } from "../dense/triangular";
-import { solveLower, solveLowerTransposed, subtractProduct, subtractTransposedProduct } from "../dense/vector";
-import { NEGATE, SUBTRACT } from "../dense/modes";
+import { solveRight, solveRightTransposed } from "../dense/solve-right";
+import { solveLower, solveLowerTransposed } from "../dense/solve-left";
+import { subtractProduct, subtractTransposedProduct } from "../dense/vector";
+import { NEGATE, SUBTRACT } from "../dense/mode";
 import { Factor } from "../factor/cholesky";
 
 /** The supernode k-th in the list, or k itself when there is no list. */

@@ -1,4 +1,5 @@
 /** What a caller asks of a Symbolic: sizes, costs and the memory that the next step would take, before it is taken. */
+import { inverseScratch } from "../dense/inverse-of-product";
 import { Symbolic } from "./symbolic";
 
 /** Address of order i32[n]: order[c] = caller's unknown eliminated c-th. */
@@ -18,5 +19,5 @@ export function symbolicBytes(s: Symbolic): f64 { return s.bytes; }
 export function factorBytes(s: Symbolic): f64 { return 8 * (s.panelEntries + s.updateEntries + <f64>s.widest); }
 /** Bytes that inverseBegin takes at its peak, with or without kept panels. */
 export function inverseBytes(s: Symbolic, keepPanels: bool): f64 {
-  return 8 * (s.frontEntries + s.largestBelow + <f64>s.n + (keepPanels ? s.panelEntries : 0));
+  return 8 * (s.frontEntries + s.largestBelow + <f64>s.n + (keepPanels ? s.panelEntries : 0)) + <f64>inverseScratch(s.widest);
 }
