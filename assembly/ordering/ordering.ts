@@ -12,7 +12,7 @@ import { Peel, peelAdvance, peelBegin, peelRelease } from "./peel";
 const AUTOMATIC = 0;
 const MINIMUM_DEGREE = 1;
 const NATURAL = 3;
-const GIVEN = 4;
+export const GIVEN = 4;
 
 const PEELING = 0;
 const ORDERING = 1;

@@ -5,9 +5,7 @@ import { allocateArray, release } from "../memory/heap";
 import { i32At, setI32 } from "../memory/access";
 import { OK, OUT_OF_MEMORY, RUNNING, TOO_LARGE } from "../memory/status";
 import { Blocks, blocksOf, releaseBlocks } from "../ordering/compress";
-import {
-  GIVEN, OrderingJob, orderingAdvance, orderingBegin, orderingKind, orderingProgress, orderingRelease, orderingResult,
-} from "../ordering/ordering";
+import { GIVEN, Ordering, orderingAdvance, orderingBegin, orderingFinish, orderingRelease } from "../ordering/ordering";
 import { columnCounts } from "./counts";
 import { Halves, permuteGraph, releaseHalves } from "./halves";
 import { countRecords, makeRecordRoom, resolveRecords, writeRecords } from "./positions";
@@ -37,7 +35,7 @@ export class Analysis {
   given: usize;
   queries: f64;
   blocks: Blocks | null;
-  ordering: OrderingJob | null;
+  ordering: usize;
   halves: Halves | null;
   symbolic: Symbolic | null;
   /** i32[4 blocks + 1]: step of each block column, its inverse (label), supernode and first unknown of each block column. */
@@ -110,7 +108,7 @@ export function analysisAdvance(job: Analysis, budget: f64): i32 {
 /** Work done ÷ work predicted, 0 to 1. */
 export function analysisProgress(job: Analysis): f64 {
   if (job.phase == COMPRESS) return 0;
-  if (job.phase == ORDER) return job.ordering ? ORDER_SHARE * orderingProgress(<OrderingJob>job.ordering) : 0;
+  if (job.phase == ORDER) return 0;
   if (job.phase == FINISHED) return 1;
   let within: f64 = 0;
   if (job.phase == ROWS) within = <f64>job.at / <f64>((<Blocks>job.blocks).graph.n + 1);
@@ -129,7 +127,7 @@ export function analysisFinish(job: Analysis): Symbolic | null {
 
 /** Drops the job and all it still holds, at any time. */
 export function analysisRelease(job: Analysis): void {
-  if (job.ordering) orderingRelease(<OrderingJob>job.ordering);
+  if (job.ordering) orderingRelease(changetype<Ordering>(job.ordering));
   if (job.halves) releaseHalves(<Halves>job.halves);
   if (job.blocks) releaseBlocks(<Blocks>job.blocks);
   if (job.symbolic) releaseSymbolic(<Symbolic>job.symbolic);
@@ -154,10 +152,10 @@ function advanceOrder(job: Analysis, budget: f64): i32 {
         if (!i32At(seen, v)) { setI32(seen, v, 1); setI32(order, b++, v); }
       }
     }
-    job.ordering = orderingBegin(blocks.graph, job.kind, job.local, job.queries);
+    job.ordering = orderingBegin(blocks.graph, job.kind, job.local);
     if (!job.ordering) return OUT_OF_MEMORY;
   }
-  const status = orderingAdvance(<OrderingJob>job.ordering, budget);
+  const status = orderingAdvance(changetype<Ordering>(job.ordering), budget);
   if (status == OK) { release(job.local); job.local = 0; job.phase = TREE; }
   return status;
 }
@@ -165,13 +163,13 @@ function advanceOrder(job: Analysis, budget: f64): i32 {
 /** Tree, counts, supernodes, and all tables whose size follows from them. */
 function buildTree(job: Analysis): i32 {
   const blocks = <Blocks>job.blocks, graph = blocks.graph, b = graph.n, n = job.n;
-  const order = orderingResult(<OrderingJob>job.ordering);
-  const kind = orderingKind(<OrderingJob>job.ordering);
+  const order = orderingFinish(changetype<Ordering>(job.ordering)), kind = job.kind;
+  job.ordering = 0;
   const scratch = allocateArray(9 * <f64>b + 1, 2);
   job.step = allocateArray(4 * <f64>b + 1, 2);
   const s = allocateSymbolic();
   job.symbolic = s;
-  if (!scratch || !job.step || !s) { release(scratch); return OUT_OF_MEMORY; }
+  if (!scratch || !job.step || !s) { release(scratch); release(order); return OUT_OF_MEMORY; }
   const size = <usize>b << 2;
   job.label = job.step + size;
   job.blockSupernode = job.label + size;
@@ -180,7 +178,7 @@ function buildTree(job: Analysis): i32 {
   for (let k = 0; k < b; ++k) { setI32(place, i32At(order, k), k); setI32(weight, k, i32At(graph.weight, i32At(order, k))); }
   const halves = permuteGraph(graph, order, place);
   job.halves = halves;
-  if (!halves) { release(scratch); return OUT_OF_MEMORY; }
+  if (!halves) { release(scratch); release(order); return OUT_OF_MEMORY; }
   eliminationTree(b, halves.earlierStart, halves.earlier, parent, work);
   postorder(b, parent, post, work, work + size);
   columnCounts(b, parent, post, halves.laterStart, halves.later, weight, count, work);
@@ -189,7 +187,7 @@ function buildTree(job: Analysis): i32 {
     for (let d = i32At(weight, k); d > 0; --d, c -= 1) { s.nonzeros += c; s.flops += c * c; }
   }
   const partition = findSupernodes(b, parent, post, count, weight);
-  if (!partition) { release(scratch); return OUT_OF_MEMORY; }
+  if (!partition) { release(scratch); release(order); return OUT_OF_MEMORY; }
 
   const supernodes = partition.count;
   s.n = n;
@@ -220,7 +218,7 @@ function buildTree(job: Analysis): i32 {
   job.local = allocateArray(<f64>n, 2);
   const complete = s.order && s.place && s.supernodeOf && s.first && s.parent && s.rowStart && s.rows && s.panel && s.lead && s.runStart
     && s.runEnd && s.childStart && s.children && s.update && s.front && s.recordStart && job.fill && job.local;
-  if (!complete) { release(scratch); releasePartition(partition); return OUT_OF_MEMORY; }
+  if (!complete) { release(scratch); release(order); releasePartition(partition); return OUT_OF_MEMORY; }
 
   for (let k = 0; k < b; ++k) { setI32(job.label, k, i32At(partition.label, k)); setI32(job.step, i32At(partition.label, k), k); }
   let unknown = 0, row = 0;
@@ -256,9 +254,8 @@ function buildTree(job: Analysis): i32 {
   const fits = layPanels(s);
   planStacks(s, job.local); // at most n supernodes
   release(scratch);
+  release(order);
   releasePartition(partition);
-  orderingRelease(<OrderingJob>job.ordering);
-  job.ordering = null;
   job.phase = ROWS;
   job.at = 0;
   return fits ? OK : TOO_LARGE;
