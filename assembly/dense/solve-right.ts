@@ -5,7 +5,7 @@
  *  Source: Goto, van de Geijn (2008), "High-Performance Implementation of the Level-3 BLAS", ACM TOMS 35(1). */
 import { bytes, SUBTRACT } from "./mode";
 import { multiply } from "./multiply";
-import { SOLVE, strip } from "./tile";
+import { Four, Minus, One, Plain, Solve, strip, Three, Two } from "./tile";
 
 /** Columns solved in strips before `multiply` carries them on. */
 const BLOCK = 96;
@@ -17,13 +17,13 @@ export function solveStrip(
   w: i32, m: i32, k: i32, a: usize, aCol: usize, b: usize, bRow: usize, bCol: usize, x: usize, xCol: usize, reciprocal: usize,
 ): void {
   const r0 = v128.load64_splat(reciprocal);
-  if (w == 1) { strip(1, true, SOLVE, false, m, k, a, aCol, b, bRow, bCol, x, xCol, r0, r0, r0, r0); return; }
+  if (w == 1) { strip<One, Minus, Plain, Solve>(false, m, k, a, aCol, b, bRow, bCol, x, xCol, r0, r0, r0, r0); return; }
   const r1 = v128.load64_splat(reciprocal, 8);
-  if (w == 2) { strip(2, true, SOLVE, false, m, k, a, aCol, b, bRow, bCol, x, xCol, r0, r1, r1, r1); return; }
+  if (w == 2) { strip<Two, Minus, Plain, Solve>(false, m, k, a, aCol, b, bRow, bCol, x, xCol, r0, r1, r1, r1); return; }
   const r2 = v128.load64_splat(reciprocal, 16);
-  if (w == 3) { strip(3, true, SOLVE, false, m, k, a, aCol, b, bRow, bCol, x, xCol, r0, r1, r2, r2); return; }
+  if (w == 3) { strip<Three, Minus, Plain, Solve>(false, m, k, a, aCol, b, bRow, bCol, x, xCol, r0, r1, r2, r2); return; }
   const r3 = v128.load64_splat(reciprocal, 24);
-  strip(4, true, SOLVE, false, m, k, a, aCol, b, bRow, bCol, x, xCol, r0, r1, r2, r3);
+  strip<Four, Minus, Plain, Solve>(false, m, k, a, aCol, b, bRow, bCol, x, xCol, r0, r1, r2, r3);
 }
 
 /** X·Tᵀ = X for a triangle T whose entry (j, q), q ≤ j, lies at t + 8·(j·tRow + q·tCol): strides may run backwards. */

@@ -13,6 +13,8 @@ const BINS = EXACT + 24 * 8;
 const WORDS = (BINS + 31) >> 5;
 /** Bytes memory grows by at least, so that many small requests do not each pay a call to the host. */
 const GROWTH: usize = 1 << 18;
+/** Bytes kept below the heap for the buffers of the dense kernels: in the data section their zeros would swell the file. */
+const RESERVED: usize = 160 << 10;
 const LAST_PAGE = 65535; // one page below 4 GiB, so that an end address fits 32 bits
 
 const binHeads = memory.data(BINS * 4, 16);
@@ -81,10 +83,14 @@ function find(size: usize): usize {
   return 0;
 }
 
+/** Address of the RESERVED bytes, a multiple of 16. */
+// @ts-ignore: decorator
+@inline export function reserved(): usize { return (__heap_base + 15) & ~(15 as usize); }
+
 /** Makes memory end at least `size` bytes of free block beyond what is free at its end; false when that cannot be. */
 function grow(size: usize): bool {
   if (!bottom) {
-    bottom = (__heap_base + 15) & ~(15 as usize);
+    bottom = reserved() + RESERVED;
     top = bottom;
     store<u32>(top, 0, 4);
     const end = <usize>memory.size() << 16; // the module's initial memory is far below 4 GiB

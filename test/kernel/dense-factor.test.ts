@@ -1,9 +1,9 @@
 import { inverse, Matrix } from "ml-matrix";
 import { beforeAll, expect, test } from "vitest";
+import { random } from "../../bench/families/random.js";
 import { Arena, gamma, preciseSum } from "../support/dense-arena.js";
 import * as twins from "../support/dense-twins.js";
 import { type RawKernel, rawKernel } from "../support/kernel.js";
-import { seeded } from "../support/random.js";
 
 let kernel: RawKernel;
 beforeAll(async () => {
@@ -28,10 +28,10 @@ function definitePanel(arena: Arena, rows: number, width: number, ld: number): n
 }
 
 test("factorPanel equals its twin however the columns are cut, and its residual is in Higham's bound", () => {
-  const random = seeded(21);
+  const uniform = random(21).uniform;
   for (const [rows, width] of panels) {
     const ld = odd(rows);
-    const arena = new Arena(kernel, (ld + 2) * (width + 1) + 20, random);
+    const arena = new Arena(kernel, (ld + 2) * (width + 1) + 20, uniform);
     const panel = definitePanel(arena, rows, width, ld);
     const floors = arena.matrix(width, 1, width);
     arena.values.fill(0, floors, floors + width);
@@ -59,12 +59,12 @@ test("factorPanel equals its twin however the columns are cut, and its residual 
 });
 
 test("factorPanel names the first pivot that is not above its floor, or not a number", () => {
-  const random = seeded(22);
+  const uniform = random(22).uniform;
   for (const width of [1, 2, 3, 4, 5, 7, 30, 101])
     for (const bad of new Set([0, 1, 2, 3, width >> 1, width - 1].filter((j) => j < width))) {
       const ld = odd(width + 2);
       for (const spoil of ["negative", "floor", "not a number"]) {
-        const arena = new Arena(kernel, (ld + 2) * (width + 1) + 20, random);
+        const arena = new Arena(kernel, (ld + 2) * (width + 1) + 20, uniform);
         const panel = definitePanel(arena, width + 2, width, ld);
         const floors = arena.matrix(width, 1, width);
         arena.values.fill(0, floors, floors + width);
@@ -89,10 +89,10 @@ function tameTriangle(arena: Arena, w: number, ld: number): number {
 }
 
 test("the solves from the right equal their twins, and each row solves a system near its own", () => {
-  const random = seeded(23);
+  const uniform = random(23).uniform;
   for (const [m, w] of systems) {
     const [ldl, ldb] = [odd(w), odd(m) + 2];
-    const arena = new Arena(kernel, (ldl + 3) * (w + 1) + (ldb + 3) * w + 20, random);
+    const arena = new Arena(kernel, (ldl + 3) * (w + 1) + (ldb + 3) * w + 20, uniform);
     const [l, b] = [tameTriangle(arena, w, ldl), arena.matrix(m, w, ldb)];
     for (const [name, twin] of [
       ["solveRightTransposed", twins.solveRightTransposed],
@@ -119,10 +119,10 @@ test("the solves from the right equal their twins, and each row solves a system 
 });
 
 test("the solves from the left equal their twins, and each column solves a system near its own", () => {
-  const random = seeded(24);
+  const uniform = random(24).uniform;
   for (const [n, w] of systems) {
     const [ld, ldx] = [odd(w) + 2, odd(w)];
-    const arena = new Arena(kernel, (ld + 3) * (w + 1) + (ldx + 3) * (n + 2) + 20, random);
+    const arena = new Arena(kernel, (ld + 3) * (w + 1) + (ldx + 3) * (n + 2) + 20, uniform);
     const [l, x] = [tameTriangle(arena, w, ld), arena.matrix(w, n + 1, ldx)];
     const check = (result: twins.Cells, columns: number, transposed: boolean) => {
       for (let j = 0; j < columns; j += 1)
@@ -159,11 +159,11 @@ test("the solves from the left equal their twins, and each column solves a syste
 });
 
 test("inverseOfProduct is symmetric, agrees with a general library, keeps L and touches nothing else", () => {
-  const random = seeded(25);
+  const uniform = random(25).uniform;
   for (const w of [...upTo(18), 31, 50, 101]) {
     const [ldl, ldz] = [odd(w), odd(w) + 2];
     const scratch = kernel.raw.inverseScratch!(w) / 8;
-    const arena = new Arena(kernel, (ldl + 3) * (w + 1) + (ldz + 3) * (w + 1) + scratch + 20, random);
+    const arena = new Arena(kernel, (ldl + 3) * (w + 1) + (ldz + 3) * (w + 1) + scratch + 20, uniform);
     const [l, z, s] = [tameTriangle(arena, w, ldl), arena.empty(w, w, ldz), arena.empty(scratch, 1, scratch)];
     const lower = Matrix.zeros(w, w);
     for (let j = 0; j < w; j += 1) for (let i = j; i < w; i += 1) lower.set(i, j, arena.values[l + i + j * ldl]!);

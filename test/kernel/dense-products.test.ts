@@ -1,8 +1,8 @@
 import { beforeAll, expect, test } from "vitest";
+import { random } from "../../bench/families/random.js";
 import { Arena, gamma, preciseSum } from "../support/dense-arena.js";
 import * as twins from "../support/dense-twins.js";
 import { type RawKernel, rawKernel } from "../support/kernel.js";
-import { seeded } from "../support/random.js";
 
 let kernel: RawKernel;
 beforeAll(async () => {
@@ -18,11 +18,11 @@ function within(got: number, exact: { sum: number; magnitude: number }, terms: n
 }
 
 test("multiply equals its scalar twin and stays in the bound of a product, every edge shape, both layouts of B", () => {
-  const random = seeded(11);
+  const uniform = random(11).uniform;
   for (const m of sizes)
     for (const n of sizes)
       for (const k of [0, 1, 2, 3, 6, 9]) {
-        const arena = new Arena(kernel, 1200, random);
+        const arena = new Arena(kernel, 1200, uniform);
         const [lda, ldb, ldc] = [odd(m), odd(Math.max(n, k)) + 2, odd(m) + 2];
         const [a, b, c] = [arena.matrix(m, k, lda), arena.matrix(Math.max(n, k), Math.max(n, k), ldb), arena.matrix(m, n, ldc)];
         for (const mode of twins.modes)
@@ -48,7 +48,7 @@ test("multiply equals its scalar twin and stays in the bound of a product, every
 });
 
 test("multiply reads nothing of C in the modes that assign", () => {
-  const arena = new Arena(kernel, 400, seeded(12));
+  const arena = new Arena(kernel, 400, random(12).uniform);
   const [a, b, c] = [arena.matrix(7, 5, 9), arena.matrix(5, 6, 7), arena.empty(7, 6, 9)];
   for (const mode of [0, 2] as const)
     arena.agree(
@@ -59,13 +59,13 @@ test("multiply reads nothing of C in the modes that assign", () => {
 });
 
 test("large products, past every block size, equal the twins", () => {
-  const random = seeded(13);
+  const uniform = random(13).uniform;
   for (const [m, n, k] of [
     [131, 103, 301],
     [3, 210, 530],
     [301, 5, 270],
   ] as const) {
-    const arena = new Arena(kernel, 2 * (m + 1) * (k + 1) + 2 * (k + 1) * (n + 1) + (m + 1) * (n + 1) + 200, random);
+    const arena = new Arena(kernel, 2 * (m + 1) * (k + 1) + 2 * (k + 1) * (n + 1) + (m + 1) * (n + 1) + 200, uniform);
     const [lda, ldb, ldc] = [m + 1, k + 1, m];
     const [a, b, c] = [arena.matrix(m, k, lda), arena.matrix(k, n, ldb), arena.matrix(m, n, ldc)];
     arena.agree(
@@ -86,9 +86,9 @@ test("large products, past every block size, equal the twins", () => {
 });
 
 test("rankUpdateLower equals its twin and leaves what lies above the diagonal alone", () => {
-  const random = seeded(14);
+  const uniform = random(14).uniform;
   for (const [n, k] of [...sizes.flatMap((n) => [0, 1, 2, 3, 6].map((k) => [n, k] as const)), [211, 37], [99, 290]] as const) {
-    const arena = new Arena(kernel, (n + 3) * (k + n + 4) + 20, random);
+    const arena = new Arena(kernel, (n + 3) * (k + n + 4) + 20, uniform);
     const [lda, ldc] = [odd(n), odd(n) + 2];
     const [a, c] = [arena.matrix(n, k, lda), arena.trapezoid(n, n, ldc)];
     for (const mode of twins.modes)
@@ -101,11 +101,11 @@ test("rankUpdateLower equals its twin and leaves what lies above the diagonal al
 });
 
 test("multiplyTransposed and its lower triangle equal their twins, every edge shape", () => {
-  const random = seeded(15);
+  const uniform = random(15).uniform;
   for (const m of sizes)
     for (const n of sizes)
       for (const k of [0, 1, 2, 3, 6, 9]) {
-        const arena = new Arena(kernel, 1200, random);
+        const arena = new Arena(kernel, 1200, uniform);
         const [lda, ldb, ldc] = [odd(k), odd(k) + 2, odd(m) + 2];
         const [a, b, c] = [arena.matrix(k, m, lda), arena.matrix(k, n, ldb), arena.matrix(m, n, ldc)];
         const mode = ((m + n + k) % 4) as twins.Mode;
@@ -126,10 +126,10 @@ test("multiplyTransposed and its lower triangle equal their twins, every edge sh
 });
 
 test("dot, axpy and the products with a vector equal their twins", () => {
-  const random = seeded(16);
+  const uniform = random(16).uniform;
   for (const m of [...sizes, 37])
     for (const w of sizes) {
-      const arena = new Arena(kernel, 800, random);
+      const arena = new Arena(kernel, 800, uniform);
       const lda = odd(m);
       const [a, x, y] = [arena.matrix(m, w, lda), arena.matrix(w, 1, w), arena.matrix(m, 1, m)];
       arena.agree(
@@ -155,9 +155,9 @@ test("dot, axpy and the products with a vector equal their twins", () => {
 });
 
 test("mirror and transposeInto move entries and nothing else", () => {
-  const random = seeded(17);
+  const uniform = random(17).uniform;
   for (const m of [...sizes, 38]) {
-    const arena = new Arena(kernel, 15000, random);
+    const arena = new Arena(kernel, 15000, uniform);
     const c = arena.trapezoid(m, m, odd(m));
     arena.agree(
       (raw, at) => raw.mirror!(m, at(c), odd(m)),
