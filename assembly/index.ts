@@ -28,3 +28,13 @@ export { inverseEntries } from "./solve/entries";
 export { inverseBegin, inverseAdvance, inverseProgress, inverseRelease, inverseDiagonal } from "./inverse/selected-inverse";
 export { inverseOnMatrix, inverseOnFactor, inverseFactorColumns, factorEntries } from "./inverse/pattern";
 export { reciprocalCondition } from "./condition";
+export { ledgerCreate, ledgerRelease, reserveSlots } from "./ledger/ledger";
+export { addLeaf, dropLeaves } from "./ledger/leaves";
+export {
+  beginColumns, setRight, loadBlock, loadUnits, carryForward, columnValues, carryBack, carryBackTo, clearColumns,
+} from "./ledger/columns";
+export { enterRows, settleRows, withdrawEntered, dropRow } from "./ledger/rows";
+export {
+  factorInnovation, scaleColumns, weighInnovation, updateBlocks, traceRatio, updateColumn, takeColumn, leafColumn, updateEstimate,
+} from "./ledger/tracked";
+export { ledgerY, ledgerX, ledgerGram, ledgerSchur, ledgerAdded, ledgerRemoved, ledgerBytes } from "./ledger/facts";

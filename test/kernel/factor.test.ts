@@ -2,23 +2,12 @@ import fc from "fast-check";
 import { CholeskyDecomposition, inverse, Matrix } from "ml-matrix";
 import { beforeAll, describe, expect, test } from "vitest";
 import { type RawKernel, rawKernel } from "../support/kernel.js";
-import { type LowerColumns, Pipeline, randomNetwork, toDense } from "../support/pipeline.js";
+import { type LowerColumns, Pipeline, randomFrom, randomNetwork, toDense } from "../support/pipeline.js";
 
 let kernel: RawKernel;
 beforeAll(async () => {
   kernel = await rawKernel();
 });
-
-/** Marsaglia's xorshift (2003), 32 bits: repeatable networks from a seed. */
-const randomFrom = (seed: number) => {
-  let state = seed | 1;
-  return () => {
-    state ^= state << 13;
-    state ^= state >>> 17;
-    state ^= state << 5;
-    return (state >>> 0) / 2 ** 32;
-  };
-};
 
 const networks = fc.record({
   seed: fc.integer({ min: 1, max: 2 ** 30 }),

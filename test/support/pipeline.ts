@@ -164,16 +164,28 @@ export class Pipeline {
   }
 }
 
-/** A random sparse symmetric positive definite matrix: `Aᵀ A`-like sums of small blocks on random pairs of states, plus a diagonal. */
-export function randomNetwork(random: () => number, states: number, dimension: number, ties: number): LowerColumns {
+/** Marsaglia's xorshift (2003), 32 bits: repeatable networks from a seed. */
+export const randomFrom = (seed: number) => {
+  let state = seed | 1;
+  return () => {
+    state ^= state << 13;
+    state ^= state >>> 17;
+    state ^= state << 5;
+    return (state >>> 0) / 2 ** 32;
+  };
+};
+
+/** A random sparse symmetric positive definite matrix: `Aᵀ A`-like sums of small blocks on random pairs of states, plus a diagonal.
+ * full: each state's own block holds all its entries, so that its unknowns share one pattern. */
+export function randomNetwork(random: () => number, states: number, dimension: number, ties: number, full = false): LowerColumns {
   const n = states * dimension;
   const dense = new Map<number, number>();
   const add = (i: number, j: number, v: number) => {
     if (i >= j) dense.set(j * n + i, (dense.get(j * n + i) ?? 0) + v);
   };
   for (let i = 0; i < n; i += 1) add(i, i, 0.5 + random());
-  for (let t = 0; t < ties; t += 1) {
-    const pair = [Math.floor(random() * states), Math.floor(random() * states)];
+  for (let t = full ? -states : 0; t < ties; t += 1) {
+    const pair = t < 0 ? [t + states] : [Math.floor(random() * states), Math.floor(random() * states)];
     const unknowns = pair.flatMap((s) => Array.from({ length: dimension }, (_, d) => s * dimension + d));
     for (let row = 0; row < dimension; row += 1) {
       const jacobian = unknowns.map(() => 2 * random() - 1);
