@@ -42,11 +42,17 @@ export function multiplyTransposedLowerTimes(
 export function rankUpdateTimes(times: i32, n: i32, k: i32, a: usize, lda: i32, c: usize, ldc: i32, mode: i32): void {
   for (let t = 0; t < times; ++t) rankUpdateLower(n, k, a, lda, c, ldc, mode);
 }
-/** Each round copies the panel from `source` first: the copy is inside what is timed. */
+/** Each round copies the panel from `source` first. */
+function copyPanel(width: i32, source: usize, panel: usize, ld: i32): void {
+  for (const end = panel + (<usize>(ld * width) << 3); panel < end; panel += 16, source += 16) v128.store(panel, v128.load(source));
+}
+export function copyTimes(times: i32, width: i32, source: usize, panel: usize, ld: i32): void {
+  for (let t = 0; t < times; ++t) copyPanel(width, source, panel, ld);
+}
 export function factorTimes(times: i32, rows: i32, width: i32, source: usize, panel: usize, ld: i32, floors: usize): i32 {
   let status = 0;
   for (let t = 0; t < times; ++t) {
-    memory.copy(panel, source, <usize>(ld * width) << 3);
+    copyPanel(width, source, panel, ld);
     status |= factorPanel(rows, width, panel, ld, floors, 0, width);
   }
   return status;

@@ -1,7 +1,7 @@
 /** Cholesky factorization of the panel of a supernode: the top width × width square P₁ = L₁L₁ᵀ, the rows below P₂ := P₂L₁⁻ᵀ.
  *  panel: rows × width, rows ≥ width, column-major, leading dimension ld; entries above the diagonal of the top square are not
  *  touched. Columns [0, from) must be done; columns [from, to) are done on return. So long panels are cut by columns.
- *  floors f64[width]: a pivot ≤ floors[j], or NaN, stops the work.
+ *  floors f64[width]: a pivot ≤ floors[j], outside [2^−1022, 2^1022], or NaN, stops the work.
  *  Returns 0, or 1 + j of the pivot that stopped it; the pivot then stands in its place, the rest of [from, to) is undefined.
  *  Cost of all columns: width³/3 + (rows − width)·width² flops. Entry (i, j) takes away its terms in the order p = 0, 1, … and is
  *  multiplied by the reciprocal of the pivot's root last, however the columns are cut.
@@ -9,26 +9,34 @@
  *  Golub, Van Loan, Matrix Computations, section 4.2 (left-looking form). */
 import { bytes, entry, SUBTRACT } from "./mode";
 import { multiply } from "./multiply";
-import { rankUpdateLower } from "./rank-update";
+import { rankUpdateLower, subtractTriangle } from "./rank-update";
 import { solveStrip } from "./solve-right";
 
 /** Columns that are done strip by strip before a block update; 48 to 192 differ by less than 5 %. */
 const BLOCK = 96;
+const SMALLEST: f64 = 2.2250738585072014e-308; // 2^−1022
+const LARGEST: f64 = 4.49423283715579e307; // 2^1022
 const reciprocals = memory.data(32, 16);
 
-/** The lower triangle of order w ≤ 4 at `at`; leaves the reciprocals of the diagonal of L. 0, or 1 + the pivot that stopped it. */
+/** The reciprocal of a usable pivot neither overflows nor loses digits. */
+// @ts-ignore: decorator
+@inline function usable(pivot: f64, floor: f64): bool { return pivot > floor && pivot >= SMALLEST && pivot <= LARGEST; }
+
+/** The lower triangle of order w ≤ 4 at `at`; leaves the reciprocals of the diagonal of L. 0, or 1 + the pivot that stopped it.
+ *  The reciprocal of the root of p is taken as √p·(1 ÷ p), so that root and division run side by side: panels of 3 to 24 columns
+ *  take 15 to 25 % less time than with 1 ÷ √p, for two roundings more. */
 function factorTile(w: i32, at: usize, ld: usize, floors: usize): i32 {
   const p0 = load<f64>(at);
-  if (!(p0 > load<f64>(floors))) return 1;
-  const d0 = Math.sqrt(p0), r0 = 1 / d0;
+  if (!usable(p0, load<f64>(floors))) return 1;
+  const d0 = Math.sqrt(p0), r0 = d0 * (1 / p0);
   store<f64>(at, d0);
   store<f64>(reciprocals, r0);
   if (w == 1) return 0;
   const l10 = load<f64>(at, 8) * r0, p1 = load<f64>(at + ld, 8) - l10 * l10;
   store<f64>(at, l10, 8);
   store<f64>(at + ld, p1, 8);
-  if (!(p1 > load<f64>(floors, 8))) return 2;
-  const d1 = Math.sqrt(p1), r1 = 1 / d1;
+  if (!usable(p1, load<f64>(floors, 8))) return 2;
+  const d1 = Math.sqrt(p1), r1 = d1 * (1 / p1);
   store<f64>(at + ld, d1, 8);
   store<f64>(reciprocals, r1, 8);
   if (w == 2) return 0;
@@ -37,8 +45,8 @@ function factorTile(w: i32, at: usize, ld: usize, floors: usize): i32 {
   store<f64>(at, l20, 16);
   store<f64>(at + ld, l21, 16);
   store<f64>(at + 2 * ld, p2, 16);
-  if (!(p2 > load<f64>(floors, 16))) return 3;
-  const d2 = Math.sqrt(p2), r2 = 1 / d2;
+  if (!usable(p2, load<f64>(floors, 16))) return 3;
+  const d2 = Math.sqrt(p2), r2 = d2 * (1 / p2);
   store<f64>(at + 2 * ld, d2, 16);
   store<f64>(reciprocals, r2, 16);
   if (w == 3) return 0;
@@ -49,10 +57,10 @@ function factorTile(w: i32, at: usize, ld: usize, floors: usize): i32 {
   store<f64>(at + ld, l31, 24);
   store<f64>(at + 2 * ld, l32, 24);
   store<f64>(at + 3 * ld, p3, 24);
-  if (!(p3 > load<f64>(floors, 24))) return 4;
+  if (!usable(p3, load<f64>(floors, 24))) return 4;
   const d3 = Math.sqrt(p3);
   store<f64>(at + 3 * ld, d3, 24);
-  store<f64>(reciprocals, 1 / d3, 24);
+  store<f64>(reciprocals, d3 * (1 / p3), 24);
   return 0;
 }
 
@@ -68,10 +76,10 @@ export function factorPanel(rows: i32, width: i32, panel: usize, ld: i32, floors
     }
     for (let j = block; j < end; j += 4) {
       const w = min(4, end - j), k = j - block, left = done + bytes(j), square = entry(panel, ld, j, j);
-      if (k) rankUpdateLower(w, k, left, ld, square, ld, SUBTRACT);
+      if (k) subtractTriangle(false, w, k, left, col, square, col);
       const stopped = factorTile(w, square, col, floors + bytes(j));
       if (stopped) return j + stopped;
-      solveStrip(w, rows - j - w, k, left + bytes(w), col, left, col, 8, square + bytes(w), col, reciprocals);
+      if (rows > j + w) solveStrip(w, rows - j - w, k, left + bytes(w), col, left, col, 8, square + bytes(w), col, reciprocals);
     }
   }
   return 0;

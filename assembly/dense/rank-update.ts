@@ -12,7 +12,8 @@ const BLOCK = 96;
 function addTriangle(fresh: bool, n: i32, k: i32, a: usize, aCol: usize, c: usize, cCol: usize): void {
   triangle<Plus, Plain>(fresh, n, k, a, aCol, a, aCol, 8, c, cCol);
 }
-function subtractTriangle(fresh: bool, n: i32, k: i32, a: usize, aCol: usize, c: usize, cCol: usize): void {
+/** The triangle alone, of any order, C −= A·Aᵀ or C := −A·Aᵀ; strides in bytes. */
+export function subtractTriangle(fresh: bool, n: i32, k: i32, a: usize, aCol: usize, c: usize, cCol: usize): void {
   triangle<Minus, Plain>(fresh, n, k, a, aCol, a, aCol, 8, c, cCol);
 }
 

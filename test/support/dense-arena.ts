@@ -5,7 +5,7 @@ import { Cells } from "./dense-twins.js";
 import { kernelBuild, type RawKernel } from "./kernel.js";
 
 /** Unit roundoff of f64, and γ_k = k·u ÷ (1 − k·u): Higham, Accuracy and Stability of Numerical Algorithms, section 3.1. */
-export const roundoff = 2 ** -53;
+const roundoff = 2 ** -53;
 export const gamma = (k: number): number => (k * roundoff) / (1 - k * roundoff);
 
 export class Arena {

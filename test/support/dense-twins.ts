@@ -97,7 +97,7 @@ export function factorPanel(
       if (i === j) {
         if (!(s > v.at(floors + j))) return 1 + j;
         v.set(panel + i + j * ld, Math.sqrt(s));
-        reciprocal = 1 / Math.sqrt(s);
+        reciprocal = Math.sqrt(s) * (1 / s);
       } else v.set(panel + i + j * ld, s * reciprocal);
     }
   }
