@@ -1,0 +1,70 @@
+// Parses the command line, runs one command, and turns what it throws into a message and an exit code.
+import { readFileSync } from "node:fs";
+import { Command, CommanderError } from "commander";
+import init, { fusedIsAvailable } from "../../bindings/loader.js";
+import { printDemo } from "../demo/print.js";
+import { SigmatideError } from "../errors.js";
+import { exits } from "./exits.js";
+import { addInverseCommand } from "./inverse.js";
+
+const loadKernel = async (): Promise<void> => {
+  const name = fusedIsAvailable() ? "kernel_relaxed_bg" : "kernel_bg";
+  await init(new URL(`./bindings/${name}.wasm`, import.meta.url));
+};
+
+/** A reader that has seen enough (`| head`) closes the pipe: no error, the rest goes nowhere. */
+function endQuietlyOnClosedPipe(): void {
+  process.stdout.on("error", (error: NodeJS.ErrnoException) => {
+    if (error.code !== "EPIPE") throw error;
+    process.exit(exits.fine);
+  });
+}
+
+function versionOfPackage(): string {
+  const facts = JSON.parse(readFileSync(new URL("../package.json", import.meta.url), "utf8"));
+  return facts.version;
+}
+
+/** @returns the exit code. */
+export async function run(words: readonly string[]): Promise<number> {
+  endQuietlyOnClosedPipe();
+  const program = new Command("sigmatide")
+    .description("Uncertainty of sparse least-squares estimates: factor, solutions and inverse of large information matrices.")
+    .version(versionOfPackage(), "--version", "print the version")
+    .helpOption("--help", "print this help")
+    .exitOverride()
+    .addHelpText("after", "\nExit codes: 0 fine, 1 a verdict that asks for attention, 2 bad input, 3 an error inside the program.");
+  addInverseCommand(program, loadKernel);
+  program
+    .command("demo")
+    .description("print the standard deviations of a small invented survey network, worst first")
+    .helpOption("--help", "print this help")
+    .exitOverride()
+    .action(async () => {
+      await loadKernel();
+      process.stdout.write(printDemo());
+    });
+  try {
+    await program.parseAsync(words, { from: "user" });
+    return exits.fine;
+  } catch (error) {
+    return exitCodeOf(error);
+  }
+}
+
+function exitCodeOf(error: unknown): number {
+  if (error instanceof CommanderError) return error.exitCode === 0 ? exits.fine : exits.badInput; // commander has printed it
+  if (error instanceof SigmatideError) {
+    const { column } = error.details;
+    const inFile = typeof column === "number" ? ` (Counting from 1, as the file does, that is column ${column + 1}.)` : "";
+    process.stderr.write(`sigmatide: ${error.message}${inFile}\n`);
+    return exits.badInput;
+  }
+  const system = error as NodeJS.ErrnoException;
+  if (system.syscall && system.code) {
+    process.stderr.write(`sigmatide: cannot ${system.syscall} ${system.path ?? "the file"} (${system.code})\n`);
+    return exits.badInput;
+  }
+  process.stderr.write(`sigmatide: internal error, please report it with the input: ${(error as Error)?.stack ?? error}\n`);
+  return exits.internal;
+}
