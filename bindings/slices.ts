@@ -63,7 +63,10 @@ export async function runStepsInSlices<T>(steps: Steps<T>, options: SliceOptions
   try {
     options.signal?.throwIfAborted();
     let step = steps.next(status.ok);
-    while (!step.done) step = steps.next(await runInSlices(step.value, options));
+    while (!step.done) {
+      options.signal?.throwIfAborted();
+      step = steps.next(await runInSlices(step.value, options));
+    }
     return step.value;
   } finally {
     steps.return(undefined as never);

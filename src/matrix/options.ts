@@ -10,7 +10,8 @@ export type OrderingName = (typeof orderings)[number];
 
 export interface FactorizeOptions {
   /** The order of elimination. `"automatic"`, the default, predicts which order makes factor and inverse cheapest; an array eliminates
-   *  unknown `ordering[k]` k-th. */
+   *  unknown `ordering[k]` k-th. `"natural"` and an array are kept up to exchanges that change no sum and no entry of L (a postorder of
+   *  the elimination tree); with `blockSizes`, a state goes where its first unknown does. */
   ordering?: Exclude<OrderingName, "given"> | ArrayLike<number> | undefined;
   /** Sizes of the states: consecutive unknowns that share one pattern, adding up to the order. By default they are found. */
   blockSizes?: ArrayLike<number> | undefined;
@@ -20,7 +21,8 @@ export const factorizeOptionNames: readonly string[] = ["ordering", "blockSizes"
 
 export interface CheckedOptions {
   code: number;
-  givenOrder: Int32Array | undefined;
+  givenOrder?: Int32Array | undefined;
+  /** Undefined: the kernel finds the states. */
   blockSizes: Int32Array | undefined;
 }
 
@@ -36,7 +38,8 @@ export function checkOptions(order: number, options: FactorizeOptions, of: strin
   }
   if (typeof ordering === "string") {
     requireWord("ordering", ordering, orderings.slice(0, -1));
-    return { code: orderings.indexOf(ordering), givenOrder: undefined, blockSizes };
+    const keepsOrder = ordering === "natural";
+    return { code: orderings.indexOf(ordering), blockSizes: blockSizes ?? (keepsOrder ? singles(order) : undefined) };
   }
   requireLength("ordering", ordering.length, order);
   const givenOrder = indicesOf("ordering", ordering, 0, order - 1);
@@ -45,5 +48,8 @@ export function checkOptions(order: number, options: FactorizeOptions, of: strin
     if (seenAt[unknown] !== -1) throw new NotAPermutationError("ordering", unknown, seenAt[unknown]!, k);
     seenAt[unknown] = k;
   }
-  return { code: orderings.indexOf("given"), givenOrder, blockSizes };
+  return { code: orderings.indexOf("given"), givenOrder, blockSizes: blockSizes ?? singles(order) };
 }
+
+/** Every unknown a state of its own: finding larger states would move unknowns within the order that the caller chose. */
+const singles = (order: number): Int32Array => new Int32Array(order).fill(1);
