@@ -17,7 +17,7 @@ export { solveLower, solveLowerMany, solveLowerTransposed, solveLowerTransposedM
 export { inverseOfProduct, inverseScratch } from "./dense/inverse-of-product";
 export { axpy, dot, subtractProduct, subtractTransposedProduct } from "./dense/vector";
 export { mirror, transposeInto } from "./dense/transpose";
-export { analysisBegin, analysisAdvance, analysisProgress, analysisFinish, analysisRelease } from "./symbolic/analysis";
+export { analysisBegin, analysisAdvance, analysisProgress, analysisFinish, analysisFactorBytes, analysisRelease } from "./symbolic/analysis";
 export { releaseSymbolic as symbolicRelease } from "./symbolic/symbolic";
 export {
   symbolicOrder, symbolicNonzeros, symbolicFlops, symbolicSupernodes, symbolicBlocks, symbolicOrdering, symbolicBytes, factorBytes, inverseBytes,

@@ -125,6 +125,9 @@ export function analysisFinish(job: Analysis): Symbolic | null {
   return symbolic;
 }
 
+/** For a job that ended TOO_LARGE: the bytes that the entries of L alone would take. */
+export function analysisFactorBytes(job: Analysis): f64 { return 8 * (<Symbolic>job.symbolic).nonzeros; }
+
 /** Drops the job and all it still holds, at any time. */
 export function analysisRelease(job: Analysis): void {
   if (job.ordering) orderingRelease(changetype<Ordering>(job.ordering));

@@ -320,3 +320,24 @@ test("a factor past the memory limit is refused with the bytes predicted, before
     setMemoryLimit(limit);
   }
 });
+
+test("a factor past WebAssembly's 4 GiB is refused with the bytes predicted, though no limit was set", async () => {
+  // An arrow with its point at the wrong end: in the natural order every entry of L fills in, order × (order + 1) ÷ 2 of them.
+  const order = 35_000;
+  const places = Int32Array.from({ length: 2 * order - 1 }, (_, k) => (k < order ? k : k - order + 1));
+  const columns = places.map((place, k) => (k < order ? place : 0));
+  const arrow = SymmetricMatrix.fromTriplets(
+    order,
+    places,
+    columns,
+    places.map((_, k) => (k < order ? order : 1)),
+  );
+  const { used } = memoryUsage();
+  const error = await errorOf(() => factorize(arrow, { ordering: "natural" }));
+  expect(error).toBeInstanceOf(MemoryLimitError);
+  expect((error as MemoryLimitError).details).toMatchObject({ bytesNeeded: 4 * order * (order + 1) });
+  expect(memoryUsage().used).toBe(used);
+  const factor = factorize(arrow, { ordering: "minimum-degree" });
+  expect(factor.statistics.nonzeros).toBe(2 * order - 1);
+  factor.dispose();
+});
