@@ -2,11 +2,11 @@
 export { default, type InitInput, type InitOptions, type InitOutput, initSync, type SyncInitInput } from "../bindings/loader.js";
 export type { SliceOptions } from "../bindings/slices.js";
 export * from "./errors.js";
-export { CholeskyFactor, type FactorStatistics, type SelectedInverseOptions } from "./matrix/choleskyFactor.js";
+export { CholeskyFactor, type FactorStatistics, type SelectedInverseOptions } from "./matrix/cholesky-factor.js";
 export { factorize, factorizeAsync } from "./matrix/factorize.js";
-export { type MatrixMarketColumns, readMatrixMarket } from "./matrix/matrixMarketReader.js";
+export { type MatrixMarketColumns, readMatrixMarket } from "./matrix/matrix-market-reader.js";
 export type { FactorizeOptions, OrderingName } from "./matrix/options.js";
-export type { SparseColumns } from "./matrix/sparseColumns.js";
-export { SymmetricMatrix } from "./matrix/symmetricMatrix.js";
+export type { SparseColumns } from "./matrix/sparse-columns.js";
+export { SymmetricMatrix } from "./matrix/symmetric-matrix.js";
 export type { Triangle } from "./matrix/triangles.js";
 export { type MemoryUsage, memoryUsage, setMemoryLimit } from "./support/memory.js";

@@ -2,11 +2,11 @@
 import { readFileSync } from "node:fs";
 import { type Command, InvalidArgumentError, Option } from "commander";
 import { OptionError } from "../errors.js";
-import type { CholeskyFactor } from "../matrix/choleskyFactor.js";
+import type { CholeskyFactor } from "../matrix/cholesky-factor.js";
 import { factorizeAsync } from "../matrix/factorize.js";
-import { type MatrixMarketColumns, readMatrixMarket } from "../matrix/matrixMarketReader.js";
-import { columnsOfEntries } from "../matrix/sparseColumns.js";
-import { SymmetricMatrix } from "../matrix/symmetricMatrix.js";
+import { type MatrixMarketColumns, readMatrixMarket } from "../matrix/matrix-market-reader.js";
+import { columnsOfEntries } from "../matrix/sparse-columns.js";
+import { SymmetricMatrix } from "../matrix/symmetric-matrix.js";
 import { tableText } from "./print.js";
 import { progressOn } from "./progress.js";
 

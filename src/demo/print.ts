@@ -1,7 +1,7 @@
 // `sigmatide demo`: how sure is each point of the invented quay network? Worst first.
 import { factorize } from "../matrix/factorize.js";
-import type { SparseColumns } from "../matrix/sparseColumns.js";
-import { SymmetricMatrix } from "../matrix/symmetricMatrix.js";
+import type { SparseColumns } from "../matrix/sparse-columns.js";
+import { SymmetricMatrix } from "../matrix/symmetric-matrix.js";
 import { coordinateDifferences, heightDifferences, pillars, points } from "./quay.js";
 
 const AXES = ["east", "north", "height"] as const;

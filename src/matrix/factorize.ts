@@ -5,10 +5,10 @@ import { kernel } from "../../bindings/loader.js";
 import { addressOrThrow, bytesAvailable, Loan, requireMemory } from "../../bindings/memory.js";
 import { runSteps, runStepsInSlices, type SliceOptions, type Steps } from "../../bindings/slices.js";
 import { NotPositiveDefiniteError } from "../errors.js";
-import { CholeskyFactor } from "./choleskyFactor.js";
+import { CholeskyFactor } from "./cholesky-factor.js";
 import { requirePositiveDiagonal } from "./diagonal.js";
 import { type CheckedOptions, checkOptions, type FactorizeOptions, factorizeOptionNames, orderingName } from "./options.js";
-import type { SymmetricMatrix } from "./symmetricMatrix.js";
+import type { SymmetricMatrix } from "./symmetric-matrix.js";
 
 /** Share of progress that the analysis of the pattern takes: it runs before the work of the numbers can be predicted. */
 const ANALYSIS_SHARE = 0.25;

@@ -5,7 +5,7 @@ import { tmpdir } from "node:os";
 import { join } from "node:path";
 import { fileURLToPath } from "node:url";
 import { afterAll, beforeAll, describe, expect, test } from "vitest";
-import { readMatrixMarket } from "../../src/matrix/matrixMarketReader.js";
+import { readMatrixMarket } from "../../src/matrix/matrix-market-reader.js";
 
 const command = fileURLToPath(new URL("../../build/command.mjs", import.meta.url));
 const run = (...words: string[]): SpawnSyncReturns<string> => spawnSync(process.execPath, [command, ...words], { encoding: "utf8" });

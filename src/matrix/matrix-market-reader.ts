@@ -2,7 +2,7 @@
 // Source: Boisvert, Pozo, Remington, "The Matrix Market Exchange Formats: Initial Design", NISTIR 5935 (1996).
 import { MatrixMarketError } from "../errors.js";
 import { compressEntries } from "./compress.js";
-import type { SparseColumns } from "./sparseColumns.js";
+import type { SparseColumns } from "./sparse-columns.js";
 
 /** What a Matrix Market text holds: compressed columns, rows ascending, duplicates added up. */
 export interface MatrixMarketColumns extends SparseColumns {

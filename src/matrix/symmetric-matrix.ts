@@ -1,10 +1,10 @@
 import { NotSquareError } from "../errors.js";
 import { finiteNumbersOf, indicesOf, requireIndex, requireKnownOptions, requireLength, requireWord } from "../support/checks.js";
 import type { LowerColumns } from "./compress.js";
-import { type MatrixMarketColumns, readMatrixMarket } from "./matrixMarketReader.js";
-import { writeMatrixMarket } from "./matrixMarketWriter.js";
-import { normalEquations } from "./normalEquations.js";
-import { columnsOfEntries, pointersOf, type SparseColumns } from "./sparseColumns.js";
+import { type MatrixMarketColumns, readMatrixMarket } from "./matrix-market-reader.js";
+import { writeMatrixMarket } from "./matrix-market-writer.js";
+import { normalEquations } from "./normal-equations.js";
+import { columnsOfEntries, pointersOf, type SparseColumns } from "./sparse-columns.js";
 import { lowerTriangle, type Triangle, triangles } from "./triangles.js";
 
 /** Largest order and number of entries: indices are 32-bit. */

@@ -6,11 +6,11 @@ import { runSteps, runStepsInSlices, type SliceOptions, type Steps } from "../..
 import { BusyError, MemoryLimitError, NotPositiveDefiniteError, PatternMismatchError } from "../errors.js";
 import { finiteNumbersOf, indicesOf, requireIndex, requireKnownOptions, requireLength, requireWord } from "../support/checks.js";
 import { requirePositiveDiagonal } from "./diagonal.js";
-import { diagonalSteps, factorPatternSteps, matrixPatternSteps } from "./inverseSteps.js";
-import type { KernelFactor } from "./kernelFactor.js";
+import { diagonalSteps, factorPatternSteps, matrixPatternSteps } from "./inverse-steps.js";
+import type { KernelFactor } from "./kernel-factor.js";
 import type { OrderingName } from "./options.js";
-import { solveSteps } from "./solveSteps.js";
-import { SymmetricMatrix } from "./symmetricMatrix.js";
+import { solveSteps } from "./solve-steps.js";
+import { SymmetricMatrix } from "./symmetric-matrix.js";
 
 /** What a factor is and what it cost. */
 export interface FactorStatistics {

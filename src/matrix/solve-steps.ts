@@ -2,7 +2,7 @@
 import { kernel } from "../../bindings/loader.js";
 import { addressOrThrow, Loan, readFloatsInto } from "../../bindings/memory.js";
 import type { Steps } from "../../bindings/slices.js";
-import type { KernelFactor } from "./kernelFactor.js";
+import type { KernelFactor } from "./kernel-factor.js";
 
 /** Right-hand sides in kernel memory at once: the group of assembly/solve/solve.ts. */
 const COLUMNS_AT_ONCE = 16;

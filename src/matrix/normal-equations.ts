@@ -4,7 +4,7 @@
 import { NegativeWeightError } from "../errors.js";
 import { finiteNumbersOf, requireLength } from "../support/checks.js";
 import type { LowerColumns } from "./compress.js";
-import { checkedColumns, type SparseColumns } from "./sparseColumns.js";
+import { checkedColumns, type SparseColumns } from "./sparse-columns.js";
 
 export function normalEquations(jacobian: SparseColumns, givenWeights?: ArrayLike<number>): LowerColumns {
   const { rows, columns: order, columnPointers, rowIndices, values } = checkedColumns(jacobian);

@@ -5,7 +5,7 @@ import { addressOrThrow, bytesAvailable, copyFloats, copyInts, requireMemory, wi
 import type { Steps } from "../../bindings/slices.js";
 import { MemoryLimitError } from "../errors.js";
 import type { LowerColumns } from "./compress.js";
-import type { KernelFactor } from "./kernelFactor.js";
+import type { KernelFactor } from "./kernel-factor.js";
 
 const WHAT = "The selected inverse";
 
