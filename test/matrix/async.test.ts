@@ -1,7 +1,7 @@
 import { beforeAll, expect, test } from "vitest";
+import { random } from "../../bench/families/random.js";
 import { type CholeskyFactor, factorize, factorizeAsync, memoryUsage, SymmetricMatrix } from "../../src/index.js";
 import { errorOf, initFacade, randomDominant } from "../support/facade.js";
-import { seeded } from "../support/random.js";
 
 /** Work for some hundred milliseconds: many slices. */
 const large = gridLaplacian(170);
@@ -41,7 +41,7 @@ function expectFractions(fractions: readonly number[]): void {
 }
 
 test("calls in slices give the same bits as calls at once, with progress that rises to 1, and let the event loop turn", async () => {
-  const small = randomDominant(300, 3, seeded(2));
+  const small = randomDominant(300, 3, random(2).uniform);
   for (const matrix of [small, large]) {
     let turns = 0;
     const timer = setInterval(() => {

@@ -1,6 +1,7 @@
 // One list of wrong calls × one check: the right error, naming the value and the place, the inputs and the factor as they were, and no
 // kernel memory kept.
 import { beforeAll, describe, expect, test } from "vitest";
+import { random } from "../../bench/families/random.js";
 import {
   type CholeskyFactor,
   EmptyColumnError,
@@ -23,14 +24,13 @@ import {
   WrongTriangleError,
 } from "../../src/index.js";
 import { errorOf, initFacade, randomDominant } from "../support/facade.js";
-import { seeded } from "../support/random.js";
 
 const ORDER = 12;
 let matrix: SymmetricMatrix;
 let factor: CholeskyFactor;
 beforeAll(async () => {
   await initFacade();
-  matrix = randomDominant(ORDER, 2, seeded(5));
+  matrix = randomDominant(ORDER, 2, random(5).uniform);
   factor = factorize(matrix);
 });
 
@@ -223,7 +223,7 @@ const wrongCalls: Record<string, WrongCall> = {
     details: { order: 2, expected: ORDER },
   },
   "a refactor with another pattern": {
-    call: () => factor.refactor(randomDominant(ORDER, 2, seeded(6))),
+    call: () => factor.refactor(randomDominant(ORDER, 2, random(6).uniform)),
     error: PatternMismatchError,
     details: { column: 0 },
   },
@@ -279,7 +279,7 @@ test("an unknown option is answered with the nearest one", async () => {
 });
 
 test("a factor past the memory limit is refused with the bytes predicted, before the numbers start", async () => {
-  const large = randomDominant(400, 6, seeded(9));
+  const large = randomDominant(400, 6, random(9).uniform);
   const trial = factorize(large);
   const { bytes } = trial.statistics;
   trial.dispose();

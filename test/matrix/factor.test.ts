@@ -1,9 +1,9 @@
 import fc from "fast-check";
 import { CholeskyDecomposition, Matrix } from "ml-matrix";
 import { beforeAll, expect, test } from "vitest";
+import { random } from "../../bench/families/random.js";
 import { type FactorizeOptions, factorize, SymmetricMatrix } from "../../src/index.js";
 import { initFacade, randomDominant, toDense } from "../support/facade.js";
-import { seeded } from "../support/random.js";
 
 beforeAll(initFacade);
 
@@ -16,21 +16,21 @@ const bound = (order: number): number => 20 * order * Number.EPSILON * 400 * 10;
 test("solutions, inverse columns, entries, diagonal and patterns agree with a dense library's inverse", () => {
   fc.assert(
     fc.property(fc.integer({ min: 1, max: 60 }), fc.nat(4), fc.integer(), fc.constantFrom(...orders), (order, density, seed, ordering) => {
-      const random = seeded(seed);
-      const matrix = randomDominant(order, density, random);
+      const uniform = random(seed).uniform;
+      const matrix = randomDominant(order, density, uniform);
       const inverse = new CholeskyDecomposition(new Matrix(toDense(matrix))).solve(Matrix.eye(order));
       const close = (actual: number, expected: number) => expect(Math.abs(actual - expected)).toBeLessThan(bound(order));
       const factor = factorize(matrix, { ordering });
 
-      const rhs = Float64Array.from({ length: 3 * order }, () => 2 * random() - 1);
+      const rhs = Float64Array.from({ length: 3 * order }, () => 2 * uniform() - 1);
       const expected = inverse.mmul(new Matrix([...Array(3).keys()].map((c) => [...rhs.subarray(c * order, (c + 1) * order)])).transpose());
       for (const [k, value] of factor.solve(rhs, 3).entries()) close(value, expected.get(k % order, Math.floor(k / order)));
 
-      const columns = Array.from({ length: 20 }, () => Math.floor(random() * order));
+      const columns = Array.from({ length: 20 }, () => Math.floor(uniform() * order));
       for (const [k, value] of factor.inverseColumns(columns).entries())
         close(value, inverse.get(k % order, columns[Math.floor(k / order)]!));
 
-      const rows = columns.map(() => Math.floor(random() * order));
+      const rows = columns.map(() => Math.floor(uniform() * order));
       for (const [k, value] of factor.inverseEntries(rows, columns).entries()) close(value, inverse.get(rows[k]!, columns[k]!));
       for (const [j, value] of factor.inverseDiagonal().entries()) close(value, inverse.get(j, j));
 
@@ -55,7 +55,7 @@ test("solutions, inverse columns, entries, diagonal and patterns agree with a de
 });
 
 test("more right-hand sides than the kernel takes at once are solved like each alone", () => {
-  const matrix = randomDominant(40, 3, seeded(7));
+  const matrix = randomDominant(40, 3, random(7).uniform);
   const factor = factorize(matrix);
   const rhs = Float64Array.from({ length: 40 * 37 }, (_, k) => Math.sin(k));
   const together = factor.solve(rhs, 37);
@@ -97,7 +97,7 @@ test("order 0 has an empty factor, order 1 a number", () => {
 });
 
 test("refactor gives the same bits as a fresh factor, and takes no memory", () => {
-  const first = randomDominant(200, 4, seeded(1));
+  const first = randomDominant(200, 4, random(1).uniform);
   const { columnPointers, rowIndices, order } = first;
   const doubled = SymmetricMatrix.fromColumns({ order, columnPointers, rowIndices, values: first.values.map((v, p) => v * (1 + (p % 3))) });
   const strong = SymmetricMatrix.fromColumns({
@@ -120,7 +120,7 @@ test("refactor gives the same bits as a fresh factor, and takes no memory", () =
 });
 
 test("a given order and given block sizes are used", () => {
-  const matrix = randomDominant(30, 2, seeded(3));
+  const matrix = randomDominant(30, 2, random(3).uniform);
   const reversed = Array.from({ length: 30 }, (_, k) => 29 - k);
   const reference = factorize(matrix);
   const expected = reference.inverseDiagonal();

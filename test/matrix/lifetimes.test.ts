@@ -1,4 +1,5 @@
 import { expect, test } from "vitest";
+import { random } from "../../bench/families/random.js";
 import {
   BusyError,
   type CholeskyFactor,
@@ -9,9 +10,8 @@ import {
   SymmetricMatrix,
 } from "../../src/index.js";
 import { errorOf, initFacade, randomDominant } from "../support/facade.js";
-import { seeded } from "../support/random.js";
 
-const matrix = randomDominant(120, 3, seeded(11));
+const matrix = randomDominant(120, 3, random(11).uniform);
 
 test("before init: matrices can be made, read and written; all that needs the kernel throws NotInitializedError", async () => {
   expect(SymmetricMatrix.fromMatrixMarket(matrix.toMatrixMarket()).values).toEqual(matrix.values);
@@ -90,7 +90,7 @@ test("refactor takes no memory", () => {
 });
 
 test("while an asynchronous call reads a factor, refactor is refused and dispose makes the call reject; no memory is kept", async () => {
-  const large = randomDominant(1500, 2, seeded(12));
+  const large = randomDominant(1500, 2, random(12).uniform);
   const { used } = memoryUsage();
   const factor = factorize(large);
   const running = factor.selectedInverseAsync();

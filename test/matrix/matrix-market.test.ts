@@ -1,9 +1,9 @@
 // The format's rules: Boisvert, Pozo, Remington, "The Matrix Market Exchange Formats: Initial Design", NISTIR 5935 (1996).
 import fc from "fast-check";
 import { describe, expect, test } from "vitest";
+import { random } from "../../bench/families/random.js";
 import { MatrixMarketError, NotSquareError, NotSymmetricError, readMatrixMarket, SymmetricMatrix } from "../../src/index.js";
 import { randomDominant, toDense } from "../support/facade.js";
-import { seeded } from "../support/random.js";
 
 test("the paper's first example, a general 5 × 5 coordinate matrix, reads entry by entry", () => {
   const file = readMatrixMarket(`%%MatrixMarket matrix coordinate real general
@@ -71,7 +71,7 @@ test("writing and reading returns every bit", () => {
       expect([...again.values].every((value, k) => Object.is(value, matrix.values[k]))).toBe(true);
     }),
   );
-  const large = randomDominant(3000, 8, seeded(4));
+  const large = randomDominant(3000, 8, random(4).uniform);
   expect(SymmetricMatrix.fromMatrixMarket(large.toMatrixMarket()).values).toEqual(large.values);
 });
 

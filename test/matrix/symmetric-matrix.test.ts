@@ -1,21 +1,21 @@
 import fc from "fast-check";
 import { Matrix } from "ml-matrix";
 import { expect, test } from "vitest";
+import { random } from "../../bench/families/random.js";
 import { SymmetricMatrix } from "../../src/index.js";
 import { randomDominant, toDense } from "../support/facade.js";
-import { seeded } from "../support/random.js";
 
 const arraysOf = ({ columnPointers, rowIndices, values }: SymmetricMatrix) => ({ columnPointers, rowIndices, values });
 
 test("lower, upper and full input, triplets and columns, sorted or not, give one matrix", () => {
   fc.assert(
     fc.property(fc.integer({ min: 1, max: 30 }), fc.nat(5), fc.integer(), (order, density, seed) => {
-      const random = seeded(seed);
-      const matrix = randomDominant(order, density, random);
+      const uniform = random(seed).uniform;
+      const matrix = randomDominant(order, density, uniform);
       const dense = toDense(matrix);
       const places = dense.flatMap((row, i) => row.flatMap((value, j) => (value === 0 ? [] : [{ i, j, value }])));
       for (let k = places.length - 1; k > 0; k -= 1) {
-        const other = Math.floor(random() * (k + 1));
+        const other = Math.floor(uniform() * (k + 1));
         [places[k], places[other]] = [places[other]!, places[k]!];
       }
       for (const triangle of ["lower", "upper", "full"] as const) {
@@ -63,22 +63,22 @@ test("full input may differ by rounding, and its lower half is kept", () => {
 test("JᵀWJ agrees with a dense library's product, on random Jacobians with duplicates", () => {
   fc.assert(
     fc.property(fc.integer({ min: 1, max: 25 }), fc.integer({ min: 1, max: 15 }), fc.integer(), (rows, columns, seed) => {
-      const random = seeded(seed);
+      const uniform = random(seed).uniform;
       const columnPointers = [0];
       const rowIndices: number[] = [];
       const values: number[] = [];
       const dense = Matrix.zeros(rows, columns);
       for (let j = 0; j < columns; j += 1) {
-        for (let k = Math.floor(random() * 6); k > 0; k -= 1) {
-          const i = Math.floor(random() * rows);
-          const value = 2 * random() - 1;
+        for (let k = Math.floor(uniform() * 6); k > 0; k -= 1) {
+          const i = Math.floor(uniform() * rows);
+          const value = 2 * uniform() - 1;
           rowIndices.push(i);
           values.push(value);
           dense.set(i, j, dense.get(i, j) + value);
         }
         columnPointers.push(values.length);
       }
-      const weights = Float64Array.from({ length: rows }, random);
+      const weights = Float64Array.from({ length: rows }, uniform);
       const normal = SymmetricMatrix.fromNormalEquations({ rows, columns, columnPointers, rowIndices, values }, weights);
       const expected = dense.transpose().mmul(Matrix.diag([...weights]).mmul(dense));
       const actual = toDense(normal);
