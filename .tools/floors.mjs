@@ -6,7 +6,8 @@ import { dirname, join, normalize } from "node:path";
 const floors = [
   ["assembly"],
   ["bindings"],
-  ["src/errors.ts", "src/support"],
+  ["src/errors.ts"],
+  ["src/support"],
   ["src/matrix"],
   ["src/estimate"],
   ["src/model", "src/log"],
