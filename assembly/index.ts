@@ -38,3 +38,4 @@ export {
   factorInnovation, scaleColumns, weighInnovation, updateBlocks, traceRatio, updateColumn, takeColumn, leafColumn, updateEstimate,
 } from "./ledger/tracked";
 export { ledgerY, ledgerX, ledgerGram, ledgerSchur, ledgerAdded, ledgerRemoved, ledgerBytes } from "./ledger/facts";
+export { householderScratch, triangularize } from "./dense/householder";

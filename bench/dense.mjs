@@ -189,3 +189,24 @@ for (const backward of [0, 1])
       return { addresses: [panel, x], run, flops: w * w + 2 * (rows - w) * w };
     },
   );
+report(
+  "triangularize, less the copy of its input",
+  [
+    [6, 3],
+    [12, 6],
+    [30, 6],
+    [30, 12],
+    [60, 24],
+    [100, 48],
+    [200, 96],
+    [400, 192],
+    [1000, 384],
+  ],
+  (m, n) => {
+    // biome-ignore format: a table
+    const [source, a, scratch] = [matrix(m, n), matrix(m, n), matrix(m + 2 * n + 40, 34)];
+    const run = (times) => kernel.triangularizeTimes(times, m, n, source, a, even(m), scratch);
+    const apart = (times) => kernel.copyTimes(times, n, source, a, even(m));
+    return { addresses: [source, a, scratch], run, apart, flops: 2 * n * n * (m - n / 3) };
+  },
+);

@@ -1,5 +1,6 @@
 // Loops around the dense kernels, built by bench/dense.mjs alone, so that small sizes are timed without calls from JavaScript.
 import { factorPanel } from "../dense/factor-panel";
+import { triangularize } from "../dense/householder";
 import { inverseOfProduct } from "../dense/inverse-of-product";
 import { madd } from "../dense/madd";
 import { multiply } from "../dense/multiply";
@@ -56,6 +57,12 @@ export function factorTimes(times: i32, rows: i32, width: i32, source: usize, pa
     status |= factorPanel(rows, width, panel, ld, floors, 0, width);
   }
   return status;
+}
+export function triangularizeTimes(times: i32, m: i32, n: i32, source: usize, a: usize, ld: i32, scratch: usize): void {
+  for (let t = 0; t < times; ++t) {
+    copyPanel(n, source, a, ld);
+    triangularize(m, n, n, a, ld, scratch);
+  }
 }
 export function solveRightTimes(times: i32, transposed: bool, m: i32, w: i32, l: usize, ldl: i32, b: usize, ldb: i32): void {
   for (let t = 0; t < times; ++t) if (transposed) solveRightTransposed(m, w, l, ldl, b, ldb); else solveRight(m, w, l, ldl, b, ldb);

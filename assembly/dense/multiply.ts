@@ -1,5 +1,5 @@
 /** C op A·B with C m × n, A m × k, B k × n.
- *  a, c: column-major, leading dimensions lda, ldc (elements, either sign). Entry (p, j) of B lies at b + 8·(p·bRow + j·bCol):
+ *  a, c: column-major, leading dimensions lda, ldc (elements, either sign, not 0). Entry (p, j) of B lies at b + 8·(p·bRow + j·bCol):
  *  bRow = 1, bCol = ldb for a column-major B; bRow = ldb, bCol = 1 for the transpose of one. mode as in mode.ts.
  *  C must not overlap A or B. Any of m, n, k may be 0; with k = 0 the modes that do not read C set it to zero.
  *  Cost 2·m·n·k flops. Each entry of C takes its terms in the order p = 0, 1, …, from C or from zero.
