@@ -4,4 +4,6 @@ export type { Reading, StateDeclaration } from "./reading.js";
 export type { ReadingForm, ReadingKind, Setup } from "./reading-form.js";
 export { findForm, type ReadingKindName, readingKinds } from "./reading-kinds.js";
 export { cauchy, huber, type RobustWeight, tukey } from "./robust.js";
+export type { Known } from "./starting/known.js";
+export { type MissingStart, startingValue, startingValues } from "./starting/starting-values.js";
 export { type StateAt, type StateKind, type StateKindName, stateKinds } from "./states.js";
