@@ -4,7 +4,9 @@ export {
 } from "./memory/heap";
 export function isFused(): bool { return ASC_FEATURE_RELAXED_SIMD; }
 export { blocksOf, releaseBlocks } from "./ordering/compress";
-export { orderingBegin, orderingAdvance, orderingFinish, orderingRelease } from "./ordering/ordering";
+export {
+  orderingBegin, orderingAdvance, orderingProgress, orderingChosen, orderingPrediction, orderingFinish, orderingRelease,
+} from "./ordering/ordering";
 export { permuteGraph, releaseHalves } from "./symbolic/halves";
 export { eliminationTree, postorder } from "./symbolic/tree";
 export { columnCounts } from "./symbolic/counts";

@@ -9,7 +9,7 @@
  *  Sources: Amestoy, Davis, Duff, "An approximate minimum degree ordering algorithm", SIAM J. Matrix Anal. Appl. 17 (1996);
  *  Liu, "Modification of the minimum-degree algorithm by multiple elimination", ACM Trans. Math. Softw. 11 (1985). */
 import { allocateArray, release } from "../memory/heap";
-import { addI32, atI32, i32At, setI32 } from "../memory/access";
+import { addI32, atI32, f64At, i32At, setF64, setI32 } from "../memory/access";
 import { OK, RUNNING } from "../memory/status";
 import { Graph } from "./graph";
 
@@ -20,12 +20,20 @@ const SPARE_ROOM = 7;
 const PIVOT_COST: f64 = 60;
 const ENTRY_COST: f64 = 1.6;
 
+/** The same for a whole order, for a vertex and for an entry of the graph. */
+const VERTEX_WORK: f64 = 100;
+const ENTRY_WORK: f64 = 20;
+const LOAD_COST: f64 = 20; // the same for a vertex that is taken over from the graph
+/** Vertices taken over before the budget is looked at. */
+const LOAD_CHUNK = 8192;
+
 const UNLISTED: u8 = 0;
 const LISTED: u8 = 1;
 const PENDING: u8 = 2; // touched in this pass, listed at its end
 
 @unmanaged
 export class MinimumDegree {
+  graph: Graph;
   n: i32;
   /** Vertices and unknowns not yet eliminated. */
   verticesLeft: i32;
@@ -71,6 +79,8 @@ export class MinimumDegree {
   classNow: i32;
   pivots: usize; // i32[n]: pivots in order, so that paths can be summed from the root
   pivotCount: i32;
+  unknowns: i32;
+  loaded: i32; // vertices whose lists have been copied
   arrays: usize; // the one block that holds all arrays but `list` and `head`
 }
 
@@ -82,6 +92,7 @@ export function minimumDegreeBegin(graph: Graph, classes: usize): MinimumDegree 
   memory.fill(changetype<usize>(m), 0, offsetof<MinimumDegree>());
   let unknowns: i64 = 0;
   for (let v = 0; v < n; ++v) unknowns += i32At(graph.weight, v);
+  m.graph = graph;
   let buckets = 16;
   while (buckets < n) buckets <<= 1;
   m.room = edges + SPARE_ROOM * n + 1;
@@ -111,30 +122,12 @@ export function minimumDegreeBegin(graph: Graph, classes: usize): MinimumDegree 
   m.bucketMask = buckets - 1;
   m.n = n;
   m.verticesLeft = n;
+  m.unknowns = <i32>unknowns;
   m.unknownsLeft = <i32>unknowns;
   m.free = edges;
   m.tag = 2;
   m.classes = classes;
   m.classNow = -1;
-  memory.copy(m.list, graph.adjacent, <usize>edges << 2);
-  memory.copy(m.weight, graph.weight, stride);
-  memory.fill(m.head, 0xff, (<usize>unknowns + 1) << 2);
-  memory.fill(m.bucket, 0xff, <usize>buckets << 2);
-  memory.fill(m.state, UNLISTED, n);
-  memory.fill(m.parent, 0xff, stride);
-  memory.fill(m.memberNext, 0xff, stride);
-  memory.fill(m.elements, 0, stride);
-  for (let v = 0; v < n; ++v) {
-    const from = i32At(graph.start, v), end = i32At(graph.start, v + 1);
-    setI32(m.start, v, from);
-    setI32(m.length, v, end - from);
-    setI32(m.memberLast, v, v);
-    setI32(m.stamp, v, 1);
-    let degree = 0;
-    for (let p = from; p < end; ++p) degree += i32At(graph.weight, i32At(graph.adjacent, p));
-    setI32(m.degree, v, degree);
-  }
-  sortByClass(m);
   return m;
 }
 
@@ -148,6 +141,11 @@ export function minimumDegreeRelease(m: MinimumDegree): void {
 /** Eliminates until about `budget` units of work are done. OK when all vertices are ordered, else RUNNING. */
 export function minimumDegreeAdvance(m: MinimumDegree, budget: f64): i32 {
   const stop = m.spent + budget;
+  while (m.loaded < m.n) {
+    if (m.spent >= stop) return RUNNING;
+    loadSome(m);
+    if (m.loaded == m.n) sortByClass(m);
+  }
   while (m.verticesLeft > 0) {
     if (m.spent >= stop) return RUNNING;
     const p = i32At(m.head, m.leastDegree);
@@ -155,6 +153,38 @@ export function minimumDegreeAdvance(m: MinimumDegree, budget: f64): i32 {
     else if (!beginPass(m)) openClass(m);
   }
   return OK;
+}
+
+/** Copies the lists of some more vertices, and prepares as large a part of what is not numbered by vertices. */
+function loadSome(m: MinimumDegree): void {
+  const graph = m.graph, n = m.n, from = m.loaded, to = min(from + LOAD_CHUNK, n);
+  const first = i32At(graph.start, from), end = i32At(graph.start, to), bytes = <usize>(to - from) << 2;
+  memory.copy(atI32(m.list, first), atI32(graph.adjacent, first), <usize>(end - first) << 2);
+  memory.copy(atI32(m.weight, from), atI32(graph.weight, from), bytes);
+  memory.fill(atI32(m.parent, from), 0xff, bytes);
+  memory.fill(atI32(m.memberNext, from), 0xff, bytes);
+  memory.fill(atI32(m.elements, from), 0, bytes);
+  memory.fill(m.state + from, UNLISTED, to - from);
+  for (let v = from; v < to; ++v) {
+    const p0 = i32At(graph.start, v), p1 = i32At(graph.start, v + 1);
+    setI32(m.start, v, p0);
+    setI32(m.length, v, p1 - p0);
+    setI32(m.memberLast, v, v);
+    setI32(m.stamp, v, 1);
+    let degree = 0;
+    for (let p = p0; p < p1; ++p) degree += i32At(graph.weight, i32At(graph.adjacent, p));
+    setI32(m.degree, v, degree);
+  }
+  fillPart(m.head, m.unknowns + 1, from, to, n);
+  fillPart(m.bucket, m.bucketMask + 1, from, to, n);
+  m.loaded = to;
+  m.spent += <f64>(to - from) * LOAD_COST + <f64>(end - first) * ENTRY_COST;
+}
+
+/** −1 in that part of an i32[size] that from … to is of 0 … n. */
+function fillPart(array: usize, size: i32, from: i32, to: i32, n: i32): void {
+  const first = <i32>(<i64>size * from / n), end = <i32>(<i64>size * to / n);
+  memory.fill(atI32(array, first), 0xff, <usize>(end - first) << 2);
 }
 
 /** byClass: vertices by ascending class, descending number, as lists are filled from the front. A sort by counting. */
@@ -471,4 +501,23 @@ function compact(m: MinimumDegree): void {
   }
   m.free = put;
   m.spent += ENTRY_COST * <f64>n;
+}
+
+/** Entries of L on the way from each unknown to the root, summed over unknowns; every path counts whole pivots from the one that
+ *  holds the unknown. pathOf f64[n], by vertex, gets each one's path. An element's parent is the one that absorbed it, which
+ *  can lie a little nearer to the leaves than the true parent. */
+export function minimumDegreePaths(m: MinimumDegree, pathOf: usize): f64 {
+  let sum: f64 = 0;
+  for (let k = m.pivotCount - 1; k >= 0; --k) {
+    const p = i32At(m.pivots, k), up = i32At(m.parent, p), own = <f64>i32At(m.elements, p);
+    const path = own * <f64>i32At(m.degree, p) + own * (own + 1) * 0.5 + (up >= 0 ? f64At(pathOf, up) : 0);
+    for (let v = p; v >= 0; v = i32At(m.memberNext, v)) setF64(pathOf, v, path);
+    sum += own * path;
+  }
+  return sum;
+}
+
+/** What ordering `graph` will cost, in budget units. */
+export function minimumDegreeWork(graph: Graph): f64 {
+  return VERTEX_WORK * <f64>graph.n + ENTRY_WORK * <f64>i32At(graph.start, graph.n);
 }

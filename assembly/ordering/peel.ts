@@ -7,7 +7,7 @@
  *  Sources: Buzbee, Golub, Nielson, "On direct methods for solving Poisson's equations", SIAM J. Numer. Anal. 7 (1970) (cyclic
  *  reduction); Amestoy, Davis, Duff (1996), section on dense rows. */
 import { allocateArray, release } from "../memory/heap";
-import { i32At, setI32 } from "../memory/access";
+import { f64At, i32At, setF64, setI32 } from "../memory/access";
 import { OK, OUT_OF_MEMORY, RUNNING } from "../memory/status";
 import { Graph } from "./graph";
 
@@ -253,4 +253,34 @@ function copyCore(p: Peel, budget: f64): void {
   p.cursor = c;
   p.spent += work;
   if (c == core.n) p.phase = DONE;
+}
+
+/** Share of the work done, 0 to 1, by what has been copied and peeled. */
+export function peelProgress(p: Peel): f64 {
+  if (p.phase == DONE) return 1;
+  return min(0.99, p.spent / (peelWork(p.graph) + 1));
+}
+
+/** What peeling `graph` will cost, in budget units. */
+export function peelWork(graph: Graph): f64 {
+  return 3 * VERTEX_COST * <f64>graph.n + 2 * ENTRY_COST * <f64>i32At(graph.start, graph.n);
+}
+
+/** Entries of L on the way from each peeled unknown to the root, summed over unknowns. pathOf f64[graph.n] holds the paths of the
+ *  core's vertices and gets the others'; hubs count as the root. Of two neighbours left by a vertex, one is an ancestor of the other:
+ *  the way leads over the one with the longer path. */
+export function peelPaths(p: Peel, pathOf: usize): f64 {
+  const n = p.graph.n;
+  for (let k = n - p.hubs; k < n; ++k) setF64(pathOf, i32At(p.order, k), 0);
+  let sum: f64 = 0;
+  for (let k = p.peeled - 1; k >= 0; --k) {
+    const v = i32At(p.order, k), a = i32At(p.first, v), b = i32At(p.second, v), own = <f64>i32At(p.graph.weight, v);
+    let path: f64 = 0, below: f64 = 0;
+    if (a >= 0) { path = f64At(pathOf, a); below = <f64>i32At(p.graph.weight, a); }
+    if (b >= 0) { path = max(path, f64At(pathOf, b)); below += <f64>i32At(p.graph.weight, b); }
+    path += own * below + own * (own + 1) * 0.5;
+    setF64(pathOf, v, path);
+    sum += own * path;
+  }
+  return sum;
 }

@@ -5,7 +5,9 @@ import { allocateArray, release } from "../memory/heap";
 import { i32At, setI32 } from "../memory/access";
 import { OK, OUT_OF_MEMORY, RUNNING, TOO_LARGE } from "../memory/status";
 import { Blocks, blocksOf, releaseBlocks } from "../ordering/compress";
-import { GIVEN, Ordering, orderingAdvance, orderingBegin, orderingFinish, orderingRelease } from "../ordering/ordering";
+import {
+  GIVEN, Ordering, orderingAdvance, orderingBegin, orderingChosen, orderingFinish, orderingProgress, orderingRelease,
+} from "../ordering/ordering";
 import { columnCounts } from "./counts";
 import { Halves, permuteGraph, releaseHalves } from "./halves";
 import { countRecords, makeRecordRoom, resolveRecords, writeRecords } from "./positions";
@@ -108,7 +110,7 @@ export function analysisAdvance(job: Analysis, budget: f64): i32 {
 /** Work done ÷ work predicted, 0 to 1. */
 export function analysisProgress(job: Analysis): f64 {
   if (job.phase == COMPRESS) return 0;
-  if (job.phase == ORDER) return 0;
+  if (job.phase == ORDER) return job.ordering ? ORDER_SHARE * orderingProgress(changetype<Ordering>(job.ordering)) : 0;
   if (job.phase == FINISHED) return 1;
   let within: f64 = 0;
   if (job.phase == ROWS) within = <f64>job.at / <f64>((<Blocks>job.blocks).graph.n + 1);
@@ -155,7 +157,7 @@ function advanceOrder(job: Analysis, budget: f64): i32 {
         if (!i32At(seen, v)) { setI32(seen, v, 1); setI32(order, b++, v); }
       }
     }
-    job.ordering = orderingBegin(blocks.graph, job.kind, job.local);
+    job.ordering = orderingBegin(blocks.graph, job.kind, job.local, 1, 0, job.queries);
     if (!job.ordering) return OUT_OF_MEMORY;
   }
   const status = orderingAdvance(changetype<Ordering>(job.ordering), budget);
@@ -166,7 +168,7 @@ function advanceOrder(job: Analysis, budget: f64): i32 {
 /** Tree, counts, supernodes, and all tables whose size follows from them. */
 function buildTree(job: Analysis): i32 {
   const blocks = <Blocks>job.blocks, graph = blocks.graph, b = graph.n, n = job.n;
-  const order = orderingFinish(changetype<Ordering>(job.ordering)), kind = job.kind;
+  const kind = orderingChosen(changetype<Ordering>(job.ordering)), order = orderingFinish(changetype<Ordering>(job.ordering));
   job.ordering = 0;
   const scratch = allocateArray(9 * <f64>b + 1, 2);
   job.step = allocateArray(4 * <f64>b + 1, 2);

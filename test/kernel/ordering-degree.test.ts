@@ -27,7 +27,7 @@ describe("minimum degree", () => {
       fc.property(graphs, fc.integer({ min: 1, max: 3000 }), (graph, budget) => {
         const whole = orderGraph(kernel, graph, "minimumDegree");
         expect(ascending(whole.order)).toEqual(upTo(graph.n));
-        expect(orderGraph(kernel, graph, "minimumDegree", budget).order).toEqual(whole.order);
+        expect(orderGraph(kernel, graph, "minimumDegree", { budget }).order).toEqual(whole.order);
       }),
       { numRuns: 200 },
     );
@@ -102,7 +102,7 @@ describe("minimum degree", () => {
     const copy = graphIntoKernel(kernel, graph);
     const before = raw.memoryUsed!();
     for (let steps = 0; steps < 60; steps += 3) {
-      const job = raw.orderingBegin!(copy.address, kinds.minimumDegree, 0);
+      const job = raw.orderingBegin!(copy.address, kinds.minimumDegree, 0, 1, 0, 0);
       for (let k = 0; k < steps; k += 1) raw.orderingAdvance!(job, 2000);
       raw.orderingRelease!(job);
       expect(raw.memoryUsed!()).toBe(before);
@@ -110,7 +110,7 @@ describe("minimum degree", () => {
     const outcomes = new Set<string>();
     for (let room = 0; room < 400_000; room += 5003) {
       raw.setMemoryLimit!(before + room);
-      const job = raw.orderingBegin!(copy.address, kinds.minimumDegree, 0);
+      const job = raw.orderingBegin!(copy.address, kinds.minimumDegree, 0, 1, 0, 0);
       if (job === 0) outcomes.add("refused");
       else {
         outcomes.add(`status ${raw.orderingAdvance!(job, 1e18)}`);
@@ -127,6 +127,6 @@ describe("minimum degree", () => {
     const graph = grid(5, 4);
     const given = upTo(20).map((k) => (7 * k + 3) % 20);
     expect([...orderGraph(kernel, graph, "natural").order]).toEqual(upTo(20));
-    expect([...orderGraph(kernel, graph, "given", 1, given).order]).toEqual(given);
+    expect([...orderGraph(kernel, graph, "given", { budget: 1, given }).order]).toEqual(given);
   });
 });

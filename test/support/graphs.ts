@@ -1,5 +1,5 @@
 // Graphs of states for tests of the ordering, and elimination by the definition as the truth about an order.
-import { intoKernel, intsAt } from "./arrays.js";
+import { floatsAt, intoKernel, intsAt } from "./arrays.js";
 import type { RawKernel } from "./kernel.js";
 
 export interface TestGraph {
@@ -121,21 +121,34 @@ export function graphIntoKernel(kernel: RawKernel, { n, start, adjacent, weight 
 /** Kinds of order, as the kernel numbers them. */
 export const kinds = { automatic: 0, minimumDegree: 1, nestedDissection: 2, natural: 3, given: 4 } as const;
 
-/** Orders a graph in slices of `budget`. */
-export function orderGraph(kernel: RawKernel, graph: TestGraph, kind: keyof typeof kinds, budget = 1e18, given?: ArrayLike<number>) {
+/** What an order is for: factorizations, selected inverses, queries. */
+export type Demand = readonly [number, number, number];
+
+/** Orders a graph in slices of `budget`. Gives what the kernel predicts of the order and how the progress went. */
+export function orderGraph(
+  kernel: RawKernel,
+  graph: TestGraph,
+  kind: keyof typeof kinds,
+  { budget = 1e18, given, demand = [1, 0, 0] }: { budget?: number; given?: ArrayLike<number>; demand?: Demand } = {},
+) {
   const { raw } = kernel;
   const copy = graphIntoKernel(kernel, graph);
   const list = given ? intoKernel(kernel, Int32Array.from(given)) : 0;
-  const job = raw.orderingBegin!(copy.address, kinds[kind], list) >>> 0;
+  const job = raw.orderingBegin!(copy.address, kinds[kind], list, ...demand) >>> 0;
   if (job === 0) throw new Error("no memory");
-  let slices = 1;
-  let status = raw.orderingAdvance!(job, budget);
-  for (; status === -1; slices += 1) status = raw.orderingAdvance!(job, budget);
+  const progress: number[] = [raw.orderingProgress!(job)];
+  let status = -1;
+  while (status === -1) {
+    status = raw.orderingAdvance!(job, budget);
+    progress.push(raw.orderingProgress!(job));
+  }
   if (status !== 0) throw new Error(`status ${status}`);
+  const [nonzeros, flops, path] = floatsAt(kernel, raw.orderingPrediction!(job), 3);
+  const chosen = raw.orderingChosen!(job);
   const address = raw.orderingFinish!(job);
   const order = intsAt(kernel, address, graph.n);
   raw.release!(address);
   raw.release!(list);
   copy.free();
-  return { order, slices };
+  return { order, progress, chosen, predicted: { nonzeros: nonzeros!, flops: flops!, path: path! } };
 }
