@@ -503,16 +503,21 @@ function compact(m: MinimumDegree): void {
   m.spent += ENTRY_COST * <f64>n;
 }
 
-/** Entries of L on the way from each unknown to the root, summed over unknowns; every path counts whole pivots from the one that
- *  holds the unknown. pathOf f64[n], by vertex, gets each one's path. An element's parent is the one that absorbed it, which
- *  can lie a little nearer to the leaves than the true parent. */
+/** Entries of L on the way from each unknown to the root, summed over unknowns. pathOf f64[n], by vertex, gets each one's path. Upper
+ *  bounds: an element's parent is the pivot that absorbed it, from that one's first vertex on, and the true parent can lie later. */
 export function minimumDegreePaths(m: MinimumDegree, pathOf: usize): f64 {
   let sum: f64 = 0;
   for (let k = m.pivotCount - 1; k >= 0; --k) {
     const p = i32At(m.pivots, k), up = i32At(m.parent, p), own = <f64>i32At(m.elements, p);
-    const path = own * <f64>i32At(m.degree, p) + own * (own + 1) * 0.5 + (up >= 0 ? f64At(pathOf, up) : 0);
-    for (let v = p; v >= 0; v = i32At(m.memberNext, v)) setF64(pathOf, v, path);
-    sum += own * path;
+    let count = own + <f64>i32At(m.degree, p); // of the first column
+    let path = own * count - own * (own - 1) * 0.5 + (up >= 0 ? f64At(pathOf, up) : 0);
+    for (let v = p; v >= 0; v = i32At(m.memberNext, v)) {
+      const w = <f64>i32At(m.graph.weight, v);
+      setF64(pathOf, v, path);
+      sum += w * path;
+      path -= w * count - w * (w - 1) * 0.5;
+      count -= w;
+    }
   }
   return sum;
 }

@@ -49,9 +49,8 @@ describe("nested dissection", () => {
           const truth = eliminate(graph, order);
           expect(predicted.nonzeros).toBe(truth.nonzeros);
           expect(predicted.flops / truth.flops).toBeCloseTo(1, 12);
-          // Paths count whole pivots, and an element's parent may lie nearer than the true one: longer, by up to 1.2 on large graphs.
+          // A parent may be taken for one nearer to the leaves, never nearer to the root.
           expect(predicted.path / truth.path).toBeGreaterThan(1 - 1e-12);
-          expect(predicted.path / truth.path).toBeLessThan(1.7);
         }
       }),
       { numRuns: 40 },
@@ -61,7 +60,9 @@ describe("nested dissection", () => {
 
   test("on a 300 × 300 grid it needs fewer flops than George's nested dissection, and than minimum degree", () => {
     const graph = grid(300, 300);
-    const { flops, path } = eliminate(graph, orderGraph(kernel, graph, "nestedDissection").order);
+    const { order, predicted } = orderGraph(kernel, graph, "nestedDissection");
+    const { flops, path } = eliminate(graph, order);
+    expect(predicted.path).toBeLessThan(1.2 * path); // measured 1.13
     const degree = eliminate(graph, orderGraph(kernel, graph, "minimumDegree").order);
     // George, Liu, "Computer Solution of Large Sparse Positive Definite Systems" (1981), ch. 8: 829/84 n³ multiplications to leading
     // order, which is half of Σ (column count)².
