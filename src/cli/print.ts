@@ -1,7 +1,5 @@
 // Tables for people, CSV and JSON for programs. Programs get every digit; people get twelve.
 
-export type Format = "table" | "csv" | "json";
-
 /** Columns of equal length with their headings: numbers that count (indices) or measure. */
 export interface Table {
   headings: readonly string[];

@@ -41,7 +41,7 @@ function designMatrix(): { jacobian: SparseColumns; weights: number[] } {
 const unknownOf = (point: string, axis: Axis): number => AXES.length * points.indexOf(point) + AXES.indexOf(axis);
 
 /** A point and the standard deviations of its coordinates, in millimetres. */
-export interface PointPrecision {
+interface PointPrecision {
   point: string;
   east: number;
   north: number;
