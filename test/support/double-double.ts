@@ -6,7 +6,6 @@
 export type DoubleDouble = readonly [hi: number, lo: number];
 
 export const zero: DoubleDouble = [0, 0];
-export const one: DoubleDouble = [1, 0];
 
 /** 2²⁷ + 1: cuts a 53-bit number into two of 26 bits. Exact for |x| below 2⁹⁹⁶. */
 const splitter = 134217729;
@@ -39,7 +38,7 @@ export function add(a: DoubleDouble, b: DoubleDouble): DoubleDouble {
   return renormalized(sum, left + rest);
 }
 
-export const negate = (a: DoubleDouble): DoubleDouble => [-a[0], -a[1]];
+const negate = (a: DoubleDouble): DoubleDouble => [-a[0], -a[1]];
 export const subtract = (a: DoubleDouble, b: DoubleDouble): DoubleDouble => add(a, negate(b));
 
 export function multiply(a: DoubleDouble, b: DoubleDouble): DoubleDouble {
