@@ -1,7 +1,6 @@
 // Seeded simulations for the verdicts: how often something happens, and how far that may lie from its stated rate.
-import { Matrix } from "ml-matrix";
+import { inverse, Matrix } from "ml-matrix";
 import { random } from "../../bench/families/random.js";
-import { inverseByCholesky } from "../support/dense.js";
 
 const draws = 2000;
 
@@ -34,8 +33,8 @@ export const randomFactor = (order: number, normal: () => number): number[][] =>
 export function adjustment(design: number[][], noise: number[][]) {
   const a = new Matrix(design);
   const r = new Matrix(noise);
-  const weight = inverseByCholesky(r);
-  const sigma = inverseByCholesky(a.transpose().mmul(weight).mmul(a));
+  const weight = inverse(r);
+  const sigma = inverse(a.transpose().mmul(weight).mmul(a));
   const gain = sigma.mmul(a.transpose()).mmul(weight);
   const residualCovariance = r.clone().sub(a.mmul(sigma).mmul(a.transpose()));
   return {
