@@ -22,7 +22,7 @@ export function indicesOf(what: string, values: ArrayLike<number>, lowest: numbe
 
 /** All elements are finite; gives them as a fresh Float64Array. */
 export function finiteNumbersOf(what: string, values: ArrayLike<number>, where?: (position: number) => string): Float64Array {
-  const result = Float64Array.from(values);
+  const result = new Float64Array(values);
   for (let k = 0; k < result.length; k += 1) {
     if (!Number.isFinite(result[k]!)) throw new NotFiniteError(what, k, values[k]!, where?.(k));
   }
