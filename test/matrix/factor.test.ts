@@ -124,6 +124,7 @@ test("a given order and given block sizes are used", () => {
   const reversed = Array.from({ length: 30 }, (_, k) => 29 - k);
   const reference = factorize(matrix);
   const expected = reference.inverseDiagonal();
+  expect(["minimum-degree", "nested-dissection"]).toContain(reference.statistics.ordering); // what "automatic" came to
   reference.dispose();
   const choices: [FactorizeOptions, string][] = [
     [{ ordering: reversed }, "given"],
