@@ -33,11 +33,12 @@ export { reciprocalCondition } from "./condition";
 export { ledgerCreate, ledgerRelease, reserveSlots } from "./ledger/ledger";
 export { addLeaf, dropLeaves } from "./ledger/leaves";
 export {
-  beginColumns, setRight, loadBlock, loadUnits, carryForward, columnValues, carryBack, carryBackTo, clearColumns,
+  beginColumns, setRight, loadBlock, loadUnits, carryForward, columnValues, carryBack, carryBackTo, clearColumns, loadKept,
+  countAdded, solveEstimate,
 } from "./ledger/columns";
 export { enterRows, settleRows, withdrawEntered, dropRow } from "./ledger/rows";
 export {
-  factorInnovation, scaleColumns, weighInnovation, updateBlocks, traceRatio, updateColumn, takeColumn, leafColumn, updateEstimate,
+  factorInnovation, scaleColumns, updateBlocks, traceRatio, updateColumn, takeColumn, leafColumn, blocksOfInverse,
 } from "./ledger/tracked";
 export { ledgerY, ledgerX, ledgerGram, ledgerSchur, ledgerAdded, ledgerRemoved, ledgerBytes } from "./ledger/facts";
 export { householderScratch, triangularize } from "./dense/householder";

@@ -308,6 +308,46 @@ function combineNode(l: Ledger, x: usize, width: i32, node: i32): void {
   multiply(k, width, count, l.buffer, k, chunkNumbers(chunk), 1, load<i32>(chunk, 8), x, k, SUBTRACT);
 }
 
+/** Loads the ledger's added rows from `since` on, as they stand in the chunks (L⁻¹ Aᵀ already), into columns [0, added − since), with
+ *  f = K⁻¹ Vᵀ X as seen by the rows before, which is the border of K, and schur = the corner of K, so that after scaleColumns and
+ *  carryBack they are B of the batch that came since.  Requires that nothing is removed and that only rows before `since` count now
+ *  (countAdded); other columns may have been carried forward before. */
+export function loadKept(l: Ledger, since: i32, rows: i32): void {
+  const s = l.factor.symbolic, k = l.columns, ld = l.addedRoom;
+  for (let node = 0, end = s.supernodes + leaves(l); node < end; ++node) {
+    const chunk = chunkOf(l, node), count = load<i32>(chunk, 4), room = load<i32>(chunk, 8), ids: usize = load<u32>(chunk);
+    if (!count || i32At(ids, count - 1) < since) continue; // ids ascend while nothing is removed
+    const slot = l.baseSlots + node - s.supernodes, isLeaf = node >= s.supernodes;
+    const first = isLeaf ? i32At(l.slotPosition, slot) : i32At(s.first, node), width = nodeWidth(l, node), numbers = chunkNumbers(chunk);
+    if (isLeaf) touch(l, slot); else l.listFrom = addPath(s, node, l.list, l.listFrom, l.mark);
+    for (let q = count - 1; q >= 0 && i32At(ids, q) >= since; --q) {
+      const column = i32At(ids, q) - since;
+      for (let u = 0; u < width; ++u) setF64(l.x, (first + u) * k + column, f64At(numbers, u * room + q));
+    }
+  }
+  for (let q = 0; q < rows; ++q) {
+    for (let i = 0; i < since; ++i) setF64(l.fAdded, q * ld + i, f64At(l.kAdded, i * ld + since + q));
+    for (let i = q; i < rows; ++i) setF64(l.schur, q * rows + i, f64At(l.kAdded, (since + q) * ld + since + i));
+  }
+}
+
+/** Makes only the first `count` added rows count, for loadKept; returns how many did. The others stay where they are. */
+export function countAdded(l: Ledger, count: i32): i32 {
+  const before = l.added;
+  l.added = count;
+  return before;
+}
+
+/** x f64[positions] := the estimate, L⁻ᵀ (y + V S⁻¹ g), in column 0 of the worked-on columns. OK or OUT_OF_MEMORY. Clear afterwards. */
+export function solveEstimate(l: Ledger): i32 {
+  if (beginColumns(l, 1) != OK) return OUT_OF_MEMORY;
+  memory.copy(l.x, l.y, <usize>l.positions << 3);
+  for (let q = 0; q < l.added; ++q) setF64(l.fAdded, q, -f64At(l.hAdded, q));
+  for (let q = 0; q < l.removed; ++q) setF64(l.fRemoved, q, -f64At(l.hRemoved, q));
+  carryBack(l);
+  return OK;
+}
+
 /** X := Σ Aᵀ (times what was done to the columns since carryForward), at all positions. Destroys f. */
 export function carryBack(l: Ledger): void {
   weigh(l);

@@ -1,9 +1,9 @@
-/** Marginals kept current: the diagonal blocks of Σ, one block column of it, and the estimate, changed by what a batch of rows changes.
+/** Marginals kept current: the diagonal blocks of Σ and one block column of it, changed by what a batch of rows changes.
  *  With W = Σ Aᵀ before the batch and its signed factor  C + A Σ Aᵀ = K J Kᵀ,  B = W K⁻ᵀ:
- *      Σᵢⱼ' = Σᵢⱼ − Bᵢ J Bⱼᵀ,   x' = x + B J K⁻¹ (e − A x).
+ *      Σᵢⱼ' = Σᵢⱼ − Bᵢ J Bⱼᵀ.
  *  Blocks lie one after another by slot, each d × d; the column lies as columns do, its `across` entries side by side for each position.
  *  Source: Woodbury (1950); the additive form of the covariance update in sequential least squares (Plackett 1950). */
-import { atF64, f64At, i32At, setF64 } from "../memory/access";
+import { atF64, f64At, i32At, setF64, u32At } from "../memory/access";
 import { factorPanel } from "../dense/factor-panel";
 import { multiply } from "../dense/multiply";
 import { inverseOfProduct, inverseScratch } from "../dense/inverse-of-product";
@@ -11,6 +11,7 @@ import { solveLowerMany, solveLowerTransposedMany } from "../dense/solve-left";
 import { solveRightTransposed } from "../dense/solve-right";
 import { ADD, ASSIGN, SUBTRACT } from "../dense/mode";
 import { OK } from "../memory/status";
+import { SelectedInverse } from "../inverse/selected-inverse";
 import { Ledger, slotDimension } from "./ledger";
 
 /** A pivot of 1 − a Σ aᵀ at most this is rounding noise (as in signed.ts). */
@@ -56,11 +57,6 @@ export function scaleColumns(l: Ledger, rows: i32): void {
   }
   solveRightTransposed(l.added, rows, l.schur, rows, l.fAdded, l.addedRoom);
   solveRightTransposed(l.removed, rows, l.schur, rows, l.fRemoved, l.removedRoom);
-}
-
-/** weights f64[rows] := K⁻¹ (e − A x), given innovation e − A x in place. */
-export function weighInnovation(l: Ledger, rows: i32, weights: usize): void {
-  solveLowerMany(rows, 1, l.schur, rows, weights, rows);
 }
 
 /** blocks := blocks − B J Bᵀ for slots [from, to); `block` is the address of slot `from`'s. largest f64 by slot: the largest trace that
@@ -137,8 +133,14 @@ export function leafColumn(l: Ledger, slot: i32, column: usize, next: usize, blo
   memory.copy(own, block, <usize>(d * d) << 3);
 }
 
-/** x += B J w for all positions: the estimate after the batch; weights from weighInnovation. */
-export function updateEstimate(l: Ledger, plus: i32, minus: i32, weights: usize, x: usize): void {
-  for (let q = plus; q < plus + minus; ++q) setF64(weights, q, -f64At(weights, q));
-  multiply(1, l.positions, plus + minus, weights, 1, l.x, 1, l.columns, x, 1, ADD);
+/** blocks := the diagonal blocks of Σ out of the kept panels of a selected inverse of the base, slot by slot. For a ledger without leaves
+ *  and rows. */
+export function blocksOfInverse(l: Ledger, z: SelectedInverse, blocks: usize): void {
+  const s = l.factor.symbolic;
+  for (let slot = 0; slot < l.slots; ++slot) {
+    const first = i32At(l.slotPosition, slot), d = slotDimension(l, slot), t = i32At(s.supernodeOf, first);
+    const lead = i32At(s.lead, t), at = z.panels + (<usize>u32At(s.panel, t) << 3) + (<usize>((first - i32At(s.first, t)) * (lead + 1)) << 3);
+    for (let j = 0; j < d; ++j) for (let i = 0; i < d; ++i) setF64(blocks, j * d + i, f64At(at, (i >= j ? j * lead + i : i * lead + j)));
+    blocks += <usize>(d * d) << 3;
+  }
 }
