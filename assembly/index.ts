@@ -24,7 +24,7 @@ export { releaseSymbolic as symbolicRelease } from "./symbolic/symbolic";
 export {
   symbolicOrder, symbolicNonzeros, symbolicFlops, symbolicSupernodes, symbolicBlocks, symbolicOrdering, symbolicBytes, factorBytes, inverseBytes,
 } from "./symbolic/facts";
-export { factorCreate, factorRelease, factorBegin, factorAdvance, factorProgress, factorPivot, logDeterminant } from "./factor/cholesky";
+export { factorCreate, factorRelease, factorBegin, factorAdvance, factorProgress, factorPivot, logDeterminant, pivotSpread } from "./factor/cholesky";
 export { solveBegin, solveAdvance, solveProgress, solveRelease } from "./solve/solve";
 export { inverseEntries } from "./solve/entries";
 export { inverseBegin, inverseAdvance, inverseProgress, inverseRelease, inverseDiagonal } from "./inverse/selected-inverse";

@@ -46,6 +46,7 @@ export interface KernelExports {
   factorPivot(factor: number): number;
   factorRelease(factor: number): void;
   logDeterminant(factor: number): number;
+  pivotSpread(factor: number, diagonal: number): number;
   reciprocalCondition(factor: number, columnStart: number, rowIndex: number, values: number): number;
 
   solveBegin(factor: number, target: number, columns: number, units: number): number;
@@ -61,6 +62,41 @@ export interface KernelExports {
   inverseDiagonal(inverse: number): number;
   inverseOnMatrix(inverse: number, out: number): void;
   inverseFactorColumns(inverse: number, columnStart: number, rowIndex: number, values: number): number;
+
+  symbolicOrder(symbolic: number): number;
+  ledgerCreate(factor: number, slots: number, dimensions: number): number;
+  ledgerRelease(ledger: number): void;
+  ledgerX(ledger: number): number;
+  ledgerGram(ledger: number): number;
+  ledgerAdded(ledger: number): number;
+  ledgerRemoved(ledger: number): number;
+  ledgerBytes(ledger: number): number;
+  addLeaf(ledger: number, dimension: number, count: number, parents: number, numbers: number, z: number): number;
+  dropLeaves(ledger: number, slots: number): void;
+  setRight(ledger: number, eta: number): number;
+  beginColumns(ledger: number, columns: number): number;
+  loadBlock(ledger: number, from: number, rows: number, slot: number, block: number): void;
+  loadUnits(ledger: number, from: number, slot: number): void;
+  loadKept(ledger: number, since: number, rows: number): void;
+  countAdded(ledger: number, count: number): number;
+  carryForward(ledger: number): void;
+  columnValues(ledger: number, value: number): void;
+  carryBack(ledger: number): void;
+  carryBackTo(ledger: number, slots: number, count: number): void;
+  solveEstimate(ledger: number): number;
+  clearColumns(ledger: number): void;
+  enterRows(ledger: number, plus: number, minus: number, residual: number): number;
+  settleRows(ledger: number, plus: number, minus: number): number;
+  withdrawEntered(ledger: number): void;
+  dropRow(ledger: number, id: number): void;
+  factorInnovation(ledger: number, plus: number, minus: number): number;
+  scaleColumns(ledger: number, rows: number): void;
+  updateBlocks(ledger: number, plus: number, minus: number, from: number, to: number, block: number): void;
+  traceRatio(ledger: number, blocks: number, largest: number): number;
+  updateColumn(ledger: number, plus: number, minus: number, slot: number, column: number): void;
+  takeColumn(ledger: number, from: number, slot: number, column: number): void;
+  leafColumn(ledger: number, slot: number, column: number, next: number, block: number, scratch: number): void;
+  blocksOfInverse(ledger: number, inverse: number, blocks: number): void;
 }
 
 /** What kernel calls return; a positive number is 1 + the offending unknown. The same as assembly/memory/status.ts. */

@@ -2,6 +2,10 @@
 export { default, type InitInput, type InitOptions, type InitOutput, initSync, type SyncInitInput } from "../bindings/loader.js";
 export type { SliceOptions } from "../bindings/slices.js";
 export * from "./errors.js";
+export * from "./estimate/commit-errors.js";
+export * from "./estimate/errors.js";
+export { type CommitReport, Estimate, type EstimateOptions, type MeasurementId } from "./estimate/estimate.js";
+export type { Linearization, MeasurementInput, StateId } from "./estimate/rows.js";
 export { CholeskyFactor, type FactorStatistics, type SelectedInverseOptions } from "./matrix/cholesky-factor.js";
 export { factorize, factorizeAsync } from "./matrix/factorize.js";
 export { type MatrixMarketColumns, readMatrixMarket } from "./matrix/matrix-market-reader.js";

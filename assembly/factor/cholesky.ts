@@ -154,3 +154,19 @@ export function logDeterminant(f: Factor): f64 {
   }
   return 2 * sum;
 }
+
+/** max A[j, j] ÷ L[j, j]², how far elimination shrank a pivot: a lower bound on the condition number of A scaled to unit diagonal, since
+ *  1 ÷ L[j, j]² is at most (A⁻¹)[j, j].  diagonal f64[n]: A's, caller's numbering.  1 for order 0.  Cost: n divisions. */
+export function pivotSpread(f: Factor, diagonal: usize): f64 {
+  const s = f.symbolic;
+  let spread: f64 = 1;
+  for (let t = 0; t < s.supernodes; ++t) {
+    const first = i32At(s.first, t), width = i32At(s.first, t + 1) - first, step = i32At(s.lead, t) + 1;
+    const panel = f.panels + (<usize>u32At(s.panel, t) << 3);
+    for (let j = 0; j < width; ++j) {
+      const root = f64At(panel, j * step), ratio = f64At(diagonal, i32At(s.order, first + j)) / (root * root);
+      if (ratio > spread) spread = ratio;
+    }
+  }
+  return spread;
+}

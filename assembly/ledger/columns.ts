@@ -329,6 +329,7 @@ export function loadKept(l: Ledger, since: i32, rows: i32): void {
     for (let i = 0; i < since; ++i) setF64(l.fAdded, q * ld + i, f64At(l.kAdded, i * ld + since + q));
     for (let i = q; i < rows; ++i) setF64(l.schur, q * rows + i, f64At(l.kAdded, (since + q) * ld + since + i));
   }
+  for (let j = 0; j < k; ++j) memory.fill(atF64(l.fAdded, j * ld + since), 0, <usize>rows << 3); // rows that do not count weigh nothing
 }
 
 /** Makes only the first `count` added rows count, for loadKept; returns how many did. The others stay where they are. */

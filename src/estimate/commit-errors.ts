@@ -1,0 +1,58 @@
+// What a commit, a withdrawal or a question refuses, each with the offending value and the mend.
+import { SigmatideError } from "../errors.js";
+
+/** A measurement that was never added, or is out already. */
+export class UnknownMeasurementError extends SigmatideError {
+  constructor(
+    readonly measurement: unknown,
+    why: "was never added" | "was withdrawn already" | "reads a forgotten state, which has taken its information along",
+  ) {
+    super(
+      "UNKNOWN_MEASUREMENT",
+      `Measurement ${String(measurement)} ${why}: withdraw or replace only what addMeasurement gave and is still in force.`,
+      { measurement, why },
+    );
+  }
+}
+
+/** A state that is asked for before the commit that brings it in. */
+export class NotCommittedError extends SigmatideError {
+  constructor(readonly state: number) {
+    super("NOT_COMMITTED", `State ${state} has been added but not committed yet: call commit() before asking for it.`, { state });
+  }
+}
+
+/** A call from within a commit, by its progress callback say. */
+export class CommitUnderWayError extends SigmatideError {
+  constructor(call: string) {
+    super("COMMIT_UNDER_WAY", `${call} was called while a commit is under way: wait until it has returned.`, { call });
+  }
+}
+
+/** Numbers that rounding may have spoilt beyond the tolerance. */
+export class UncertainAnswerError extends SigmatideError {
+  constructor(
+    readonly bound: number,
+    readonly tolerance: number,
+  ) {
+    super(
+      "UNCERTAIN_ANSWER",
+      `The marginals are good to a relative error of ${bound.toExponential(1)} only, and the tolerance is ${tolerance.toExponential(1)}: the ` +
+        "system is ill-conditioned. Add a prior or a tie, choose units nearer to one another, raise the tolerance, or set onDoubt: 'answer'.",
+      { bound, tolerance },
+    );
+  }
+}
+
+/** The states are not all determined. Nothing was changed. */
+export class UndeterminedError extends SigmatideError {
+  constructor(
+    /** States that can move, by id, and their names where they have one. */
+    readonly states: readonly number[],
+    readonly names: readonly string[],
+    readonly motions: readonly object[],
+    because: string,
+  ) {
+    super("UNDETERMINED", because, { states: [...states], names: [...names], motions: [...motions] });
+  }
+}

@@ -1,0 +1,190 @@
+// Orthogonal rotation of rows that read a new state: the first rows then define it given older states, the rest read older states alone.
+import type { WhitenedRows } from "./whitened.js";
+
+/** Rows of a new state rotated: R x + Σ G_p x_p = z. */
+export interface Leaf {
+  readonly state: number;
+  readonly dimension: number;
+  readonly parents: readonly number[];
+  /** L = Rᵀ (d × d, lower, column-major), then G of each parent (d × its dimension, column-major). */
+  readonly numbers: Float64Array;
+  readonly z: Float64Array;
+}
+
+/** A column of R is taken as dependent on those before it when this share of its length, or less, is left over. Householder
+ *  reflections keep errors near ε times the length, and a definition that weak is better left to a factor of the whole. */
+const RANK_TOLERANCE = 1e-9;
+
+/**
+ * Eliminates `state` from all of `pool` that reads it.
+ * @returns the leaf, and the rest of those rows (on other states alone; empty when nothing is left), or undefined when the rows do not
+ *   determine the state given the others.
+ * Cost: 2 m d (all columns) flops. Source: Golub, Van Loan, "Matrix Computations", section 5.2 (Householder).
+ */
+function splitLeaf(
+  state: number,
+  dimension: number,
+  pool: readonly WhitenedRows[],
+  dimensionOf: (state: number) => number,
+  tolerance: number = RANK_TOLERANCE,
+): { leaf: Leaf; rest: WhitenedRows | undefined } | undefined {
+  const d = dimension;
+  const states: number[] = [];
+  for (const rows of pool) for (const s of rows.states) if (s !== state && !states.includes(s)) states.push(s);
+  const { a, m, columns, columnOf } = gather([state, ...states], pool, dimensionOf);
+  if (m < d || !reflect(a, m, d, columns + 1, tolerance)) return undefined;
+
+  const numbers = new Float64Array(d * columns);
+  for (let j = 0; j < d; j += 1) {
+    const sign = a[j * m + j]! < 0 ? -1 : 1; // rows turned so that the diagonal is positive
+    for (let c = j; c < d; c += 1) numbers[j * d + c] = sign * a[c * m + j]!;
+    for (let c = d; c < columns; c += 1) numbers[c * d + j] = sign * a[c * m + j]!;
+    if (sign < 0) a[columns * m + j] = -a[columns * m + j]!;
+  }
+  const z = a.slice(columns * m, columns * m + d);
+  const left = m - d;
+  let rest: WhitenedRows | undefined;
+  if (left > 0 && states.length > 0) {
+    const blocks = states.map((s) => {
+      const first = columnOf.get(s)!;
+      const size = dimensionOf(s);
+      const block = new Float64Array(left * size);
+      for (let u = 0; u < size; u += 1) block.set(a.subarray((first + u) * m + d, (first + u + 1) * m), u * left);
+      return block;
+    });
+    rest = { states, rows: left, blocks, residual: a.slice(columns * m + d, (columns + 1) * m) };
+  }
+  return { leaf: { state, dimension: d, parents: states, numbers, z }, rest };
+}
+
+/** All rows of `pool` as one column-major matrix m × (columns + 1), states side by side as listed, the residual last. */
+function gather(
+  states: readonly number[],
+  pool: readonly WhitenedRows[],
+  dimensionOf: (state: number) => number,
+): { a: Float64Array; m: number; columns: number; columnOf: Map<number, number> } {
+  const columnOf = new Map<number, number>();
+  let columns = 0;
+  for (const s of states) {
+    columnOf.set(s, columns);
+    columns += dimensionOf(s);
+  }
+  const m = pool.reduce((sum, { rows }) => sum + rows, 0);
+  const a = new Float64Array(m * (columns + 1));
+  let top = 0;
+  for (const { states: of, rows, blocks, residual } of pool) {
+    for (const [k, s] of of.entries()) {
+      const first = columnOf.get(s)!;
+      const block = blocks[k]!;
+      for (let u = 0; u < block.length / rows; u += 1)
+        for (let q = 0; q < rows; q += 1) a[(first + u) * m + top + q] = block[u * rows + q]!;
+    }
+    a.set(residual, columns * m + top);
+    top += rows;
+  }
+  return { a, m, columns, columnOf };
+}
+
+/** Householder reflections that make the first d of `columns` columns upper triangular; false when one of them leaves no more than
+ *  `tolerance` of its length to those before it. A column of zeros is passed over when the tolerance is 0. */
+function reflect(a: Float64Array, m: number, d: number, columns: number, tolerance: number): boolean {
+  for (let j = 0; j < d; j += 1) {
+    let whole = 0;
+    let tail = 0;
+    for (let i = 0; i < m; i += 1) {
+      const square = a[j * m + i]! ** 2;
+      whole += square;
+      if (i >= j) tail += square;
+    }
+    const length = Math.sqrt(tail);
+    if (!(length > tolerance * Math.sqrt(whole)) && tolerance > 0) return false;
+    if (length === 0) continue;
+    if (j === m - 1) continue; // one row is left: it is triangular already
+    const head = a[j * m + j]!;
+    const alpha = head > 0 ? -length : length;
+    const v0 = head - alpha;
+    const scale = 1 / (alpha * v0); // −2 ÷ vᵀv
+    for (let c = j + 1; c < columns; c += 1) {
+      let sum = v0 * a[c * m + j]!;
+      for (let i = j + 1; i < m; i += 1) sum += a[j * m + i]! * a[c * m + i]!;
+      sum *= scale;
+      a[c * m + j]! += sum * v0;
+      for (let i = j + 1; i < m; i += 1) a[c * m + i]! += sum * a[j * m + i]!;
+    }
+    a[j * m + j] = alpha;
+    for (let i = j + 1; i < m; i += 1) a[j * m + i] = 0;
+  }
+  return true;
+}
+
+/**
+ * Eliminates all `states` (those new in a batch) from `rows`, in an order that the rows allow.
+ * @returns leaves in the order in which they can be added (each after its parents) and the rows left on older states, or undefined when
+ *   some state is not determined one by one.
+ */
+export function splitLeaves(
+  states: readonly number[],
+  rows: readonly WhitenedRows[],
+  dimensionOf: (state: number) => number,
+): { leaves: Leaf[]; rest: WhitenedRows[] } | undefined {
+  const leaves: Leaf[] = [];
+  let pool = [...rows];
+  const waiting = [...states];
+  while (waiting.length > 0) {
+    let found = false;
+    for (let k = waiting.length - 1; k >= 0; k -= 1) {
+      const state = waiting[k]!;
+      const split = splitLeaf(
+        state,
+        dimensionOf(state),
+        pool.filter((r) => r.states.includes(state)),
+        dimensionOf,
+      );
+      if (!split) continue;
+      leaves.push(split.leaf);
+      pool = pool.filter((r) => !r.states.includes(state));
+      if (split.rest) pool.push(split.rest);
+      waiting.splice(k, 1);
+      found = true;
+      break;
+    }
+    if (!found) return undefined;
+  }
+  return { leaves: leaves.reverse(), rest: pool };
+}
+
+/**
+ * What `rows` say about other states once `states` are left out: their information is kept, the states are not (Schur complement in
+ * square-root form).
+ * @returns at most as many rows as the other states have unknowns, plus one for the residual left over.
+ */
+export function absorbStates(
+  states: readonly number[],
+  rows: readonly WhitenedRows[],
+  dimensionOf: (state: number) => number,
+): WhitenedRows | undefined {
+  let pool = [...rows];
+  for (const state of states) {
+    const reading = pool.filter((r) => r.states.includes(state));
+    if (reading.length === 0) continue;
+    const rest = splitLeaf(state, dimensionOf(state), reading, dimensionOf, 0)?.rest;
+    pool = pool.filter((r) => !r.states.includes(state));
+    if (rest) pool.push(rest);
+  }
+  return pool.length > 0 ? stack(pool, dimensionOf) : undefined;
+}
+
+/** Rows on the same states, stacked and, when there are more rows than unknowns, rotated to as few as say the same. */
+function stack(pool: readonly WhitenedRows[], dimensionOf: (state: number) => number): WhitenedRows {
+  const states = [...new Set(pool.flatMap((r) => r.states))];
+  const { a, m, columns, columnOf } = gather(states, pool, dimensionOf);
+  const kept = Math.min(m, columns);
+  if (m > columns) reflect(a, m, columns, columns + 1, 0);
+  const blocks = states.map((s) => {
+    const first = columnOf.get(s)!;
+    const block = new Float64Array(kept * dimensionOf(s));
+    for (let u = 0; u < dimensionOf(s); u += 1) block.set(a.subarray((first + u) * m, (first + u) * m + kept), u * kept);
+    return block;
+  });
+  return { states, rows: kept, blocks, residual: a.slice(columns * m, columns * m + kept) };
+}

@@ -1,0 +1,242 @@
+// Base, leaves and ledger as the estimate uses them: states by slot, rows loaded, carried forward, kept, dropped.
+import { MemoryLimitError } from "../../bindings/errors.js";
+import { status } from "../../bindings/kernel.js";
+import { kernel } from "../../bindings/loader.js";
+import { addressOrThrow, bytesAvailable, copyFloats, writeFloats } from "../../bindings/memory.js";
+import type { Base } from "./base.js";
+import type { Leaf } from "./leaf.js";
+import type { WhitenedRows } from "./whitened.js";
+
+/** What has happened to a base since it was built, in order; replayed on the next base, and kept in snapshots. */
+export type SystemEvent =
+  | { readonly kind: "leaf"; readonly leaf: Leaf }
+  | { readonly kind: "rows"; readonly plus: readonly OwnedRows[]; readonly minus: readonly OwnedRows[] }
+  | { readonly kind: "drop"; readonly measurement: number };
+
+/** Rows with the measurement they are all of, or −1 when a rotation has mixed several. */
+export interface OwnedRows {
+  readonly rows: WhitenedRows;
+  readonly measurement: number;
+}
+
+const countRows = (list: readonly OwnedRows[]): number => list.reduce((sum, { rows }) => sum + rows.rows, 0);
+
+export class System {
+  readonly #k = kernel();
+  readonly base: Base;
+  /** Slot of each state, by state id. */
+  readonly #slotOf: number[] = [];
+  readonly #stateOf: number[] = [];
+  /** First position of each slot, one more at the end. */
+  readonly #position: number[] = [0];
+  readonly events: SystemEvent[] = [];
+  /** Measurement of each added row in the ledger. */
+  readonly #owner: number[] = [];
+  #scratch = 0;
+  #scratchBytes = 0;
+  leafNumbers = 0;
+
+  /** @param states ids by their number in the base's information matrix. */
+  constructor(base: Base, states: readonly number[], sizes: Int32Array) {
+    this.base = base;
+    for (const place of base.stateOfSlot) this.#push(states[place]!, sizes[place]!);
+  }
+
+  #push(state: number, dimension: number): void {
+    this.#slotOf[state] = this.#stateOf.length;
+    this.#stateOf.push(state);
+    this.#position.push(this.#position.at(-1)! + dimension);
+  }
+
+  get slots(): number {
+    return this.#stateOf.length;
+  }
+  get positions(): number {
+    return this.#position.at(-1)!;
+  }
+  get added(): number {
+    return this.#k.ledgerAdded(this.base.ledger);
+  }
+  get removed(): number {
+    return this.#k.ledgerRemoved(this.base.ledger);
+  }
+  get bytes(): number {
+    return this.#k.ledgerBytes(this.base.ledger);
+  }
+  slotOf(state: number): number {
+    return this.#slotOf[state]!;
+  }
+  stateAt(slot: number): number {
+    return this.#stateOf[slot]!;
+  }
+  positionOf(slot: number): number {
+    return this.#position[slot]!;
+  }
+  dimensionAt(slot: number): number {
+    return this.#position[slot + 1]! - this.#position[slot]!;
+  }
+
+  /** Kernel memory for arguments of the next call, at least `bytes` long; its contents are not kept. */
+  scratch(bytes: number): number {
+    if (bytes > this.#scratchBytes) {
+      const wanted = 2 * bytes + 256;
+      const address = addressOrThrow("The estimate's work space", this.#k.allocate(wanted), wanted);
+      this.#k.release(this.#scratch);
+      this.#scratch = address;
+      this.#scratchBytes = wanted;
+    }
+    return this.#scratch;
+  }
+
+  #require(result: number, what: string, bytes: number): void {
+    if (result === status.outOfMemory) throw new MemoryLimitError(what, bytes, bytesAvailable());
+  }
+
+  /** @throws {MemoryLimitError} nothing is changed then. */
+  addLeaf(leaf: Leaf): void {
+    const { dimension, parents, numbers, z } = leaf;
+    const address = this.scratch(8 * (numbers.length + z.length + parents.length));
+    const parentsAt = address + 8 * (numbers.length + z.length);
+    writeFloats(address, numbers);
+    writeFloats(address + 8 * numbers.length, z);
+    new Int32Array(this.#k.memory.buffer, parentsAt, parents.length).set(parents.map((p) => this.#slotOf[p]!));
+    this.#require(
+      this.#k.addLeaf(this.base.ledger, dimension, parents.length, parentsAt, address, address + 8 * numbers.length),
+      "A new state",
+      8 * numbers.length,
+    );
+    this.#push(leaf.state, dimension);
+    this.leafNumbers += numbers.length;
+    this.events.push({ kind: "leaf", leaf });
+  }
+
+  /** Takes the newest leaves away again; they must have no row in the ledger. */
+  dropLeaves(slots: number): void {
+    while (this.slots > slots) {
+      delete this.#slotOf[this.#stateOf.pop()!];
+      this.#position.pop();
+      const event = this.events.pop();
+      if (event?.kind === "leaf") this.leafNumbers -= event.leaf.numbers.length;
+    }
+    this.#k.dropLeaves(this.base.ledger, slots);
+  }
+
+  begin(columns: number): void {
+    this.#require(this.#k.beginColumns(this.base.ledger, columns), "The columns asked for", 8 * columns * this.positions);
+  }
+
+  loadRows(from: number, { states, rows, blocks }: WhitenedRows): void {
+    for (const [k, state] of states.entries()) {
+      const block = blocks[k]!;
+      const address = this.scratch(8 * block.length);
+      writeFloats(address, block);
+      this.#k.loadBlock(this.base.ledger, from, rows, this.#slotOf[state]!, address);
+    }
+  }
+
+  loadUnits(from: number, slot: number): void {
+    this.#k.loadUnits(this.base.ledger, from, slot);
+  }
+
+  forward(): void {
+    this.#k.carryForward(this.base.ledger);
+  }
+  back(): void {
+    this.#k.carryBack(this.base.ledger);
+  }
+  backTo(slots: readonly number[]): void {
+    const address = this.scratch(4 * slots.length);
+    new Int32Array(this.#k.memory.buffer, address, slots.length).set(slots);
+    this.#k.carryBackTo(this.base.ledger, address, slots.length);
+  }
+  clear(): void {
+    this.#k.clearColumns(this.base.ledger);
+  }
+
+  /** A Σ Aᵀ of the loaded columns, columns², after `forward`. */
+  gram(columns: number): Float64Array {
+    return copyFloats(this.#k.ledgerGram(this.base.ledger) >>> 0, columns * columns);
+  }
+  /** A x of the loaded columns, after `forward`. */
+  values(columns: number): Float64Array {
+    const address = this.scratch(8 * columns);
+    this.#k.columnValues(this.base.ledger, address);
+    return copyFloats(address, columns);
+  }
+  /** Σ Aᵀ at one slot, columns × dimension: `columns` numbers for each unknown, after `back` or `backTo`. */
+  columnsAt(slot: number, columns: number): Float64Array {
+    return copyFloats((this.#k.ledgerX(this.base.ledger) >>> 0) + 8 * columns * this.#position[slot]!, columns * this.dimensionAt(slot));
+  }
+
+  /** The estimate at all positions. Cost: one backward solve. */
+  estimate(): Float64Array {
+    this.#require(this.#k.solveEstimate(this.base.ledger), "The solution", 8 * this.positions);
+    const x = copyFloats(this.#k.ledgerX(this.base.ledger) >>> 0, this.positions);
+    this.clear();
+    return x;
+  }
+
+  /** Loads rows, signs +1 first, and carries them forward. Returns how many columns; `extra` more are left free at the end. */
+  loadBatch(plus: readonly OwnedRows[], minus: readonly OwnedRows[], extra = 0): number {
+    const count = countRows(plus) + countRows(minus);
+    this.begin(count + extra);
+    let from = 0;
+    for (const { rows } of [...plus, ...minus]) {
+      this.loadRows(from, rows);
+      from += rows.rows;
+    }
+    return count;
+  }
+
+  /** Enters the loaded, carried rows without letting them count. @throws {MemoryLimitError} nothing is changed then. */
+  enter(plus: readonly OwnedRows[], minus: readonly OwnedRows[]): void {
+    const [p, m] = [countRows(plus), countRows(minus)];
+    const address = this.scratch(8 * (p + m));
+    let at = address;
+    for (const { rows } of [...plus, ...minus]) {
+      writeFloats(at, rows.residual);
+      at += 8 * rows.rows;
+    }
+    this.#require(this.#k.enterRows(this.base.ledger, p, m, address), "The ledger", 8 * (p + m) * this.positions);
+  }
+
+  /** Lets entered rows count. False when the removed ones leave a state undetermined; they are out again then. */
+  settle(plus: readonly OwnedRows[], minus: readonly OwnedRows[]): boolean {
+    const [p, m] = [countRows(plus), countRows(minus)];
+    if (this.#k.settleRows(this.base.ledger, p, m) !== status.ok) return false;
+    for (const { rows, measurement } of plus) for (let q = 0; q < rows.rows; q += 1) this.#owner.push(measurement);
+    this.events.push({ kind: "rows", plus, minus });
+    return true;
+  }
+
+  /** Whether all `rows` rows of a measurement are in the ledger as they came, so that they can simply be dropped. */
+  canDrop(measurement: number): boolean {
+    return this.removed === 0 && this.#owner.includes(measurement);
+  }
+
+  drop(measurement: number): void {
+    for (let id = this.#owner.lastIndexOf(measurement); id >= 0; id = this.#owner.lastIndexOf(measurement)) {
+      this.#k.dropRow(this.base.ledger, id);
+      this.#owner.splice(id, 1);
+    }
+    this.events.push({ kind: "drop", measurement });
+  }
+
+  /** Back to the base alone: no leaf, no row, no event. */
+  renew(): void {
+    this.base.renewLedger();
+    const slots = this.base.stateOfSlot.length;
+    for (const state of this.#stateOf.splice(slots)) delete this.#slotOf[state];
+    this.#position.length = slots + 1;
+    this.#owner.length = 0;
+    this.events.length = 0;
+    this.leafNumbers = 0;
+  }
+
+  free(): void {
+    this.#k.release(this.#scratch);
+    this.#scratch = 0;
+    this.#scratchBytes = 0;
+    this.base.free();
+  }
+}
