@@ -30,7 +30,7 @@ export { inverseEntries } from "./solve/entries";
 export { inverseBegin, inverseAdvance, inverseProgress, inverseRelease, inverseDiagonal } from "./inverse/selected-inverse";
 export { inverseOnMatrix, inverseOnFactor, inverseFactorColumns, factorEntries } from "./inverse/pattern";
 export { reciprocalCondition } from "./condition";
-export { ledgerCreate, ledgerRelease, reserveSlots } from "./ledger/ledger";
+export { ledgerCreate, ledgerRelease } from "./ledger/ledger";
 export { addLeaf, dropLeaves } from "./ledger/leaves";
 export {
   beginColumns, setRight, loadBlock, loadUnits, carryForward, columnValues, carryBack, carryBackTo, clearColumns, loadKept,
@@ -40,5 +40,5 @@ export { enterRows, settleRows, withdrawEntered, dropRow } from "./ledger/rows";
 export {
   factorInnovation, scaleColumns, updateBlocks, traceRatio, updateColumn, takeColumn, leafColumn, blocksOfInverse,
 } from "./ledger/tracked";
-export { ledgerY, ledgerX, ledgerGram, ledgerSchur, ledgerAdded, ledgerRemoved, ledgerBytes } from "./ledger/facts";
+export { ledgerX, ledgerGram, ledgerAdded, ledgerRemoved, ledgerBytes, ledgerLogDeterminant } from "./ledger/facts";
 export { householderScratch, triangularize } from "./dense/householder";

@@ -71,6 +71,7 @@ export interface KernelExports {
   ledgerAdded(ledger: number): number;
   ledgerRemoved(ledger: number): number;
   ledgerBytes(ledger: number): number;
+  ledgerLogDeterminant(ledger: number): number;
   addLeaf(ledger: number, dimension: number, count: number, parents: number, numbers: number, z: number): number;
   dropLeaves(ledger: number, slots: number): void;
   setRight(ledger: number, eta: number): number;
@@ -87,7 +88,6 @@ export interface KernelExports {
   clearColumns(ledger: number): void;
   enterRows(ledger: number, plus: number, minus: number, residual: number): number;
   settleRows(ledger: number, plus: number, minus: number): number;
-  withdrawEntered(ledger: number): void;
   dropRow(ledger: number, id: number): void;
   factorInnovation(ledger: number, plus: number, minus: number): number;
   scaleColumns(ledger: number, rows: number): void;

@@ -1,18 +1,28 @@
 /** Addresses and sizes that a caller of the ledger reads. Addresses hold until the next call that makes room. */
-import { Ledger } from "./ledger";
+import { atF64, f64At, i32At } from "../memory/access";
+import { logDeterminant } from "../factor/cholesky";
+import { Ledger, slotDimension } from "./ledger";
 
-/** y f64[positions]: base and leaves' right-hand side in their coordinates. The base's part is set by the caller (forward-solved). */
-export function ledgerY(l: Ledger): usize { return l.y; }
 /** The worked-on columns, columns × positions. */
 export function ledgerX(l: Ledger): usize { return l.x; }
 /** A Σ Aᵀ of the worked-on columns, both triangles, columns². */
 export function ledgerGram(l: Ledger): usize { return l.gram; }
-/** Signed factor of C + A Σ Aᵀ, lower triangle. */
-export function ledgerSchur(l: Ledger): usize { return l.schur; }
 export function ledgerAdded(l: Ledger): i32 { return l.added; }
 export function ledgerRemoved(l: Ledger): i32 { return l.removed; }
 /** Bytes beyond the base: columns of V, the small dense matrices, leaves. */
 export function ledgerBytes(l: Ledger): f64 {
   const a = <f64>l.addedRoom, r = <f64>l.removedRoom;
   return l.chunkBytes + 16 * (a * a + a * r + r * r) + 8 * <f64>l.numberRoom;
+}
+
+/** log det Λ of base, leaves and ledger together: 2 Σ log of the diagonals of L and of K.  Cost: a logarithm an unknown and a row. */
+export function ledgerLogDeterminant(l: Ledger): f64 {
+  let sum: f64 = 0;
+  for (let slot = l.baseSlots; slot < l.slots; ++slot) {
+    const d = slotDimension(l, slot), triangle = atF64(l.numbers, i32At(l.leafStart, slot));
+    for (let j = 0; j < d; ++j) sum += Math.log(f64At(triangle, j * (d + 1)));
+  }
+  for (let q = 0; q < l.added; ++q) sum += Math.log(f64At(l.kAdded, q * (l.addedRoom + 1)));
+  for (let q = 0; q < l.removed; ++q) sum += Math.log(f64At(l.kRemoved, q * (l.removedRoom + 1)));
+  return logDeterminant(l.factor) + 2 * sum;
 }

@@ -3,6 +3,7 @@ import { MemoryLimitError } from "../../bindings/errors.js";
 import { status } from "../../bindings/kernel.js";
 import { kernel } from "../../bindings/loader.js";
 import { addressOrThrow, bytesAvailable, copyInts, Loan, requireMemory, withLoan } from "../../bindings/memory.js";
+import type { Steps } from "../../bindings/slices.js";
 import type { Information } from "./information.js";
 import type { BaseCosts } from "./policy.js";
 
@@ -30,134 +31,104 @@ export interface Singular {
   readonly pivot: number;
 }
 
-/** Builds a base, at once or in slices. */
-export class BaseBuilder {
-  readonly #k = kernel();
-  readonly #loan = new Loan("A new base");
-  readonly #information: Information;
-  readonly #columnStart: number;
-  readonly #rowIndex: number;
-  readonly #values: number;
-  #analysis = 0;
-  #symbolic = 0;
-  #factor = 0;
-  #taken = false;
-
-  /** @param queries marginals that the base will be asked for, for the choice of its order. */
-  constructor(information: Information, queries: number) {
-    this.#information = information;
-    try {
-      this.#columnStart = this.#loan.ints(information.columnPointers);
-      this.#rowIndex = this.#loan.ints(information.rowIndices);
-      this.#values = this.#loan.floats(information.values);
-      const sizes = this.#loan.ints(information.blockSizes);
-      const { order, blockSizes } = information;
-      this.#analysis = addressOrThrow("A new base", this.#k.analysisBegin(order, this.#columnStart, this.#rowIndex, blockSizes.length, sizes, 0, 0, queries), 256);
-    } catch (error) {
-      this.free();
-      throw error;
-    }
-  }
-
-  /** Work done ÷ work predicted. */
-  progress(): number {
-    if (this.#factor) return ANALYSIS_SHARE + (1 - ANALYSIS_SHARE) * this.#k.factorProgress(this.#factor);
-    return ANALYSIS_SHARE * this.#k.analysisProgress(this.#analysis);
-  }
-
-  /** Does about `budget` nanoseconds of work. True when the factor is complete; a `Singular` when there is none. */
-  advance(budget: number): boolean | Singular {
-    const k = this.#k;
-    if (!this.#factor) {
-      const result = k.analysisAdvance(this.#analysis, budget);
-      if (result === status.running) return false;
-      if (result === status.tooLarge) throw new MemoryLimitError("The factor", 2 ** 32, bytesAvailable());
-      if (result === status.outOfMemory) throw new MemoryLimitError("The analysis of the pattern", 4 * this.#information.order, bytesAvailable());
-      this.#symbolic = addressOrThrow("The analysis of the pattern", k.analysisFinish(this.#analysis), 0);
-      k.analysisRelease(this.#analysis);
-      this.#analysis = 0;
-      const bytes = k.factorBytes(this.#symbolic);
-      requireMemory("The factor", bytes);
-      this.#factor = addressOrThrow("The factor", k.factorCreate(this.#symbolic), bytes);
-      k.factorBegin(this.#factor, this.#values);
-      return false;
-    }
-    const result = k.factorAdvance(this.#factor, budget);
-    if (result === status.running) return false;
-    if (result === status.ok) return true;
-    return { unknown: result - 1, pivot: k.factorPivot(this.#factor) };
-  }
-
-  /** After `advance` has said true: the base with its ledger, right-hand side set. The builder is empty then. */
-  finish(): Base {
-    const k = this.#k;
-    const { order, blockSizes, vector } = this.#information;
-    const symbolic = this.#symbolic;
-    const factor = this.#factor;
-    const elimination = copyInts(k.symbolicOrder(symbolic) >>> 0, order);
-    const stateOf = new Int32Array(order);
-    for (let s = 0, u = 0; s < blockSizes.length; s += 1) for (let t = 0; t < blockSizes[s]!; t += 1) stateOf[u++] = s;
-    // Unknowns of one state follow one another in elimination order, since their blocks are whole.
-    const stateOfSlot = new Int32Array(blockSizes.length);
-    const dimensions = new Int32Array(blockSizes.length);
-    for (let c = 0, slot = 0; c < order; slot += 1) {
-      const s = stateOf[elimination[c]!]!;
-      stateOfSlot[slot] = s;
-      dimensions[slot] = blockSizes[s]!;
-      c += blockSizes[s]!;
-    }
-    const eta = Float64Array.from(elimination, (unknown) => vector[unknown]!);
-    const pivotSpread = this.#pivotSpread();
-    const makeLedger = (): number =>
-      withLoan("The ledger", (loan) => {
-        const ledger = addressOrThrow("The ledger", k.ledgerCreate(factor, blockSizes.length, loan.ints(dimensions)), 16 * order);
-        if (k.setRight(ledger, loan.floats(eta)) === status.ok) return ledger;
-        k.ledgerRelease(ledger);
-        throw new MemoryLimitError("The ledger", 16 * order, bytesAvailable());
-      });
-    const base: Base = {
-      symbolic,
-      factor,
-      ledger: makeLedger(),
-      stateOfSlot,
-      pivotSpread,
-      costs: {
-        flops: k.symbolicFlops(symbolic),
-        nonzeros: k.symbolicNonzeros(symbolic),
-        bytes: k.factorBytes(symbolic),
-        states: blockSizes.length,
-      },
-      renewLedger: () => {
-        const ledger = makeLedger();
-        k.ledgerRelease(base.ledger);
-        base.ledger = ledger;
-      },
-      free: () => {
-        k.ledgerRelease(base.ledger);
-        k.factorRelease(factor);
-        k.symbolicRelease(symbolic);
-      },
+/** Builds a base in steps that can be sliced; what it holds it gives back when it is dropped halfway.
+ *  @param queries marginals that the base will be asked for, for the choice of its order.
+ *  @returns the base with its ledger, right-hand side set, or where the matrix is not safely positive definite. */
+export function* baseSteps(information: Information, queries: number): Steps<Base | Singular> {
+  const k = kernel();
+  const { order, blockSizes } = information;
+  const loan = new Loan("A new base");
+  let analysis = 0;
+  let symbolic = 0;
+  let factor = 0;
+  let taken = false;
+  try {
+    const columnStart = loan.ints(information.columnPointers);
+    const rowIndex = loan.ints(information.rowIndices);
+    const values = loan.floats(information.values);
+    const sizes = loan.ints(blockSizes);
+    analysis = addressOrThrow("A new base", k.analysisBegin(order, columnStart, rowIndex, blockSizes.length, sizes, 0, 0, queries), 256);
+    const analysed = yield {
+      advance: (budget) => k.analysisAdvance(analysis, budget),
+      progress: () => k.analysisProgress(analysis),
+      from: 0,
+      to: ANALYSIS_SHARE,
     };
-    this.#taken = true;
-    this.#loan.giveBack();
+    if (analysed === status.tooLarge) throw new MemoryLimitError("The factor", k.analysisFactorBytes(analysis), bytesAvailable());
+    if (analysed === status.outOfMemory) throw new MemoryLimitError("The analysis of the pattern", 4 * order, bytesAvailable());
+    symbolic = addressOrThrow("The analysis of the pattern", k.analysisFinish(analysis), 0);
+    const bytes = k.factorBytes(symbolic);
+    requireMemory("The factor", bytes);
+    factor = addressOrThrow("The factor", k.factorCreate(symbolic), bytes);
+    k.factorBegin(factor, values);
+    const result = yield {
+      advance: (budget) => k.factorAdvance(factor, budget),
+      progress: () => k.factorProgress(factor),
+      from: ANALYSIS_SHARE,
+      to: 1,
+    };
+    if (result > 0) return { unknown: result - 1, pivot: k.factorPivot(factor) };
+    const base = finish(information, symbolic, factor);
+    taken = true;
     return base;
+  } finally {
+    if (analysis) k.analysisRelease(analysis);
+    if (factor && !taken) k.factorRelease(factor);
+    if (symbolic && !taken) k.symbolicRelease(symbolic);
+    loan.giveBack();
   }
+}
 
-  #pivotSpread(): number {
-    const { order, columnPointers, values } = this.#information;
-    return withLoan("The pivots", (loan) => {
-      const diagonal = loan.floats(Float64Array.from({ length: order }, (_, j) => values[columnPointers[j]!]!));
-      return this.#k.pivotSpread(this.#factor, diagonal);
+export const isSingular = (result: Base | Singular): result is Singular => "unknown" in result;
+
+function finish(information: Information, symbolic: number, factor: number): Base {
+  const k = kernel();
+  const { order, blockSizes, vector, columnPointers, values } = information;
+  const elimination = copyInts(k.symbolicOrder(symbolic) >>> 0, order);
+  const stateOf = new Int32Array(order);
+  for (let s = 0, u = 0; s < blockSizes.length; s += 1) for (let t = 0; t < blockSizes[s]!; t += 1) stateOf[u++] = s;
+  // Unknowns of one state follow one another in elimination order, since their blocks are whole.
+  const stateOfSlot = new Int32Array(blockSizes.length);
+  const dimensions = new Int32Array(blockSizes.length);
+  for (let c = 0, slot = 0; c < order; slot += 1) {
+    const s = stateOf[elimination[c]!]!;
+    stateOfSlot[slot] = s;
+    dimensions[slot] = blockSizes[s]!;
+    c += blockSizes[s]!;
+  }
+  const eta = Float64Array.from(elimination, (unknown) => vector[unknown]!);
+  const pivotSpread = withLoan("The pivots", (loan) =>
+    k.pivotSpread(factor, loan.floats(Float64Array.from({ length: order }, (_, j) => values[columnPointers[j]!]!))),
+  );
+  const makeLedger = (): number =>
+    withLoan("The ledger", (loan) => {
+      const ledger = addressOrThrow("The ledger", k.ledgerCreate(factor, blockSizes.length, loan.ints(dimensions)), 16 * order);
+      if (k.setRight(ledger, loan.floats(eta)) === status.ok) return ledger;
+      k.ledgerRelease(ledger);
+      throw new MemoryLimitError("The ledger", 16 * order, bytesAvailable());
     });
-  }
-
-  /** Gives back what was not taken by `finish`. */
-  free(): void {
-    if (this.#taken) return;
-    this.#taken = true;
-    if (this.#analysis) this.#k.analysisRelease(this.#analysis);
-    if (this.#factor) this.#k.factorRelease(this.#factor);
-    if (this.#symbolic) this.#k.symbolicRelease(this.#symbolic);
-    this.#loan.giveBack();
-  }
+  const base: Base = {
+    symbolic,
+    factor,
+    ledger: makeLedger(),
+    stateOfSlot,
+    pivotSpread,
+    costs: {
+      flops: k.symbolicFlops(symbolic),
+      nonzeros: k.symbolicNonzeros(symbolic),
+      bytes: k.factorBytes(symbolic),
+      states: blockSizes.length,
+    },
+    renewLedger: () => {
+      const ledger = makeLedger();
+      k.ledgerRelease(base.ledger);
+      base.ledger = ledger;
+    },
+    free: () => {
+      k.ledgerRelease(base.ledger);
+      k.factorRelease(factor);
+      k.symbolicRelease(symbolic);
+    },
+  };
+  return base;
 }

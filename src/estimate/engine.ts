@@ -1,5 +1,8 @@
 // What a commit does to base, leaves, ledger and tracked marginals: the route it takes, and back again when it cannot be completed.
-import { type Base, BaseBuilder, type Singular } from "./base.js";
+import { runSteps, type SlicedCall, type Steps } from "../../bindings/slices.js";
+import { MemoryLimitError } from "../../bindings/errors.js";
+import { status } from "../../bindings/kernel.js";
+import { type Base, baseSteps, isSingular, type Singular } from "./base.js";
 import { assembleInformation } from "./information.js";
 import { splitLeaves } from "./leaf.js";
 import { backwardCost, carryingCost, inverseCost, rebaseCost, rebasePays } from "./policy.js";
@@ -47,21 +50,38 @@ const ERROR_FACTOR = 64;
 /** Bounds below this are never a reason to keep an old base. */
 const HARMLESS = 1e-11;
 
+/** Nanoseconds of work asked for in one go while a budget of time is spent: the most by which a slice may pass it. */
+const BACKGROUND_SLICE = 2e5;
+
+interface Background {
+  readonly steps: Steps<Base | Singular>;
+  call: SlicedCall | undefined;
+  readonly world: World;
+  readonly sizes: Int32Array;
+  /** Events of the old system that the new one has taken in already. */
+  replayed: number;
+  next: System | undefined;
+}
+
 export class Engine {
   #system: System | undefined;
   readonly tracked: Tracked = new Tracked();
   readonly #dimensionOf: (state: number) => number;
   /** Nanoseconds by which the ledger has made work dearer since the last base, and the price at which a new one was last refused. */
   #carried = 0;
+  readonly #latencyBudget: number | undefined;
   #refused = 1;
   #refusal: string | undefined;
   #queries = 1000;
-  #builder: { builder: BaseBuilder; states: readonly number[]; sizes: Int32Array; since: number } | undefined;
+  /** A new base being built while the old one answers. */
+  #background: Background | undefined;
   /** Bound from the base; see `bound`. */
   #baseBound = Number.EPSILON;
 
-  constructor(dimensionOf: (state: number) => number) {
+  /** @param latencyBudget milliseconds of a commit beyond which a new base is built in slices; undefined: at once. */
+  constructor(dimensionOf: (state: number) => number, latencyBudget: number | undefined) {
     this.#dimensionOf = dimensionOf;
+    this.#latencyBudget = latencyBudget;
   }
 
   get isEmpty(): boolean {
@@ -86,11 +106,12 @@ export class Engine {
    *  @param measurements how many are in force after it.
    *  @param column the state whose column is kept, −1: none, undefined: nothing is tracked.
    *  @throws {SingularBatch} */
-  apply(batch: Batch, world: () => World, measurements: number, track: boolean, column: number): Outcome {
+  *apply(batch: Batch, world: () => World, measurements: number, track: boolean, column: number): Steps<Outcome> {
     const { newStates, plus, minus } = batch;
+    const begun = this.#latencyBudget === undefined ? 0 : performance.now();
     const rowCount = [...plus, ...minus].reduce((sum, { rows }) => sum + rows.rows, 0);
-    if (!this.#system) return this.#rebase(world(), track, "the first commit", false);
-    if (newStates.length > MOST_LEAVES) return this.#rebase(world(), track, `${newStates.length} states at once`, false);
+    if (!this.#system) return yield* this.#rebase(world(), track, "the first commit", false);
+    if (newStates.length > MOST_LEAVES) return yield* this.#rebase(world(), track, `${newStates.length} states at once`, false);
     const touched = new Set(newStates);
     const isNew = ({ rows }: OwnedRows) => rows.states.some((state) => touched.has(state));
     const split = splitLeaves(
@@ -98,12 +119,16 @@ export class Engine {
       plus.filter(isNew).map(({ rows }) => rows),
       this.#dimensionOf,
     );
-    if (!split) return this.#rebase(world(), track, "new states that only the whole determines", false);
+    if (!split) return yield* this.#rebase(world(), track, "new states that only the whole determines", false);
     const arriving = [...plus.filter((owned) => !isNew(owned)), ...split.rest.map((rows) => ({ rows, measurement: -1 }))];
-    if (rowCount > MOST_ROWS) return this.#rebase(world(), track, `${rowCount} rows at once`, true);
+    if (rowCount > MOST_ROWS) return yield* this.#rebase(world(), track, `${rowCount} rows at once`, false);
 
+    const before = this.system.events.length;
     const flops = this.#intoLedger(arriving, minus, () => split.leaves.forEach((leaf) => this.system.addLeaf(leaf)), track, column);
-    return this.#afterLedger(world, measurements, track, column, rowCount, flops, split.leaves.length);
+    const outcome = this.#ledgerOutcome(rowCount, flops, split.leaves.length, track);
+    const reason = this.#wishForBase(measurements);
+    if (this.#latencyBudget !== undefined) return this.#inBackground(outcome, reason, world, track, column, begun + this.#latencyBudget);
+    return reason ? yield* this.#afterLedger(outcome, reason, world, track, column, before) : outcome;
   }
 
   /** Leaves, drops and rows; on any failure the system is put back as it was. */
@@ -128,7 +153,7 @@ export class Engine {
           if (!this.tracked.applySigned(system, 0, m, () => {})) throw new SingularBatch(undefined);
           system.clear();
         }
-        for (const { measurement } of minus) system.drop(measurement);
+        for (const owned of minus) system.drop(owned);
         if (keepTracked) this.tracked.count(system);
         return m * system.positions;
       }
@@ -158,39 +183,81 @@ export class Engine {
     const events = system.events.slice(0, count);
     system.renew();
     this.tracked.valid = false;
-    for (const event of events) replay(system, event, undefined);
+    for (const event of events) replay(system, event);
   }
 
-  #afterLedger(
-    world: () => World,
-    measurements: number,
-    track: boolean,
-    column: number,
-    rows: number,
-    flops: number,
-    leaves: number,
-  ): Outcome {
-    const system = this.system;
-    const { base } = system;
+  #ledgerOutcome(rows: number, flops: number, leaves: number, track: boolean): Outcome {
+    const { system } = this;
     const columns = rows + (track ? 3 : 0);
     this.#carried += carryingCost(Math.max(columns, 1), system.bytes / 8, system.leafNumbers, system.added + system.removed);
-    const ledger: Outcome = {
-      route: "ledger",
-      because: leaves > 0 ? (rows > leaves ? "new states as leaves, the other rows in the ledger" : "new states as leaves") : "rows in the ledger",
-      predictedFlops: flops,
-      countedFlops: flops,
-    };
-    const price = rebaseCost(base.costs, system.slots, measurements);
-    const reason = rebasePays(this.#carried, price * this.#refused, system.bytes, base.costs);
-    if (!reason) return ledger;
-    const because = reason === "cost" ? "carrying on has cost as much as a new base" : "the ledger has outgrown its share of memory";
+    const because = leaves > 0 ? "new states as leaves, rows between older ones in the ledger" : "rows in the ledger";
+    return { route: "ledger", because, predictedFlops: flops, countedFlops: flops };
+  }
+
+  /** Why a new base is due, if it is. */
+  #wishForBase(measurements: number): string | undefined {
+    const { base, slots, bytes } = this.system;
+    const reason = rebasePays(this.#carried, rebaseCost(base.costs, slots, measurements) * this.#refused, bytes, base.costs);
+    return reason && (reason === "cost" ? "carrying on has cost as much as a new base" : "the ledger has outgrown its share of memory");
+  }
+
+  /** A new base after the ledger has taken the batch in. One that cannot be had is no failure; an abort takes the batch out again. */
+  *#afterLedger(ledger: Outcome, because: string, world: () => World, track: boolean, column: number, before: number): Steps<Outcome> {
+    let outcome: Outcome | undefined;
     try {
-      return this.#rebase(world(), track, because, true, column);
+      outcome = yield* this.#rebase(world(), track, because, true, column);
     } catch (error) {
-      if (!(error instanceof SingularBatch)) throw error;
-      this.#refuse("a new base would not be definite in f64, while leaves and ledger still are");
-      return ledger;
+      if (error instanceof SingularBatch) this.#refuse("a new base would not be definite in f64, while leaves and ledger still are");
+      else if (error instanceof MemoryLimitError) this.#refuse(`a new base does not fit into memory: ${error.message}`);
+      else throw error;
+      outcome = ledger;
+    } finally {
+      if (!outcome) this.#putBack(before);
     }
+    return outcome;
+  }
+
+  /** Spends what the deadline leaves on a new base. The old one goes on until the new one has caught up with it. */
+  #inBackground(ledger: Outcome, reason: string | undefined, world: () => World, track: boolean, column: number, deadline: number): Outcome {
+    const { system } = this;
+    if (!this.#background) {
+      if (!reason) return ledger;
+      const all = world();
+      const sizes = Int32Array.from(all.states, (state) => this.#dimensionOf(state));
+      const steps = baseSteps(this.#assemble(all, sizes), this.#queries);
+      const first = steps.next(status.ok);
+      this.#background = { steps, call: first.done ? undefined : first.value, world: all, sizes, replayed: system.events.length, next: undefined };
+    }
+    const job = this.#background;
+    while (performance.now() < deadline) {
+      if (job.call) {
+        const result = job.call.advance(BACKGROUND_SLICE);
+        if (result === status.running) continue;
+        const step = job.steps.next(result);
+        job.call = step.done ? undefined : step.value;
+        if (!step.done) continue;
+        if (isSingular(step.value)) {
+          this.#dropBackground();
+          this.#refuse("a new base would not be definite in f64, while leaves and ledger still are");
+          return ledger;
+        }
+        job.next = new System(step.value, job.world.states, job.sizes);
+      } else if (job.replayed < system.events.length) {
+        replay(job.next!, system.events[job.replayed]!);
+        job.replayed += 1;
+      } else {
+        const next = job.next!;
+        this.#background = undefined;
+        return this.#adopt(next, track, `${reason ?? "a new base was due"}; built in slices`, true, column);
+      }
+    }
+    return { ...ledger, because: `${ledger.because}; a new base is being built` };
+  }
+
+  #dropBackground(): void {
+    this.#background?.steps.return(undefined as never);
+    this.#background?.next?.free();
+    this.#background = undefined;
   }
 
   #refuse(why: string): void {
@@ -201,28 +268,24 @@ export class Engine {
 
   /** Builds a base of everything. `carry`: the system holds the same information already, so tracked numbers move over.
    *  @throws {SingularBatch} nothing is changed then. */
-  #rebase(world: World, track: boolean, because: string, carry: boolean, column = -1): Outcome {
+  *#rebase(world: World, track: boolean, because: string, carry: boolean, column = -1): Steps<Outcome> {
     const sizes = Int32Array.from(world.states, (state) => this.#dimensionOf(state));
-    const builder = new BaseBuilder(this.#assemble(world, sizes), this.#queries);
-    let base: Base;
-    try {
-      for (;;) {
-        const done = builder.advance(1e18);
-        if (done === true) break;
-        if (done !== false) throw new SingularBatch(done);
-      }
-      base = builder.finish();
-    } finally {
-      builder.free();
-    }
+    const base = yield* baseSteps(this.#assemble(world, sizes), this.#queries);
+    if (isSingular(base)) throw new SingularBatch(base);
+    this.#dropBackground();
+    return this.#adopt(new System(base, world.states, sizes), track, because, carry, column);
+  }
+
+  /** Puts a new system in the place of the old one, unless it would be the worse of the two. */
+  #adopt(next: System, track: boolean, because: string, carry: boolean, column: number): Outcome {
+    const { base } = next;
     const bound = ERROR_FACTOR * Number.EPSILON * base.pivotSpread;
     const old = this.#system;
     if (old && carry && bound > Math.max(HARMLESS, 2 * this.#baseBound) && old.slots > 0) {
-      base.free();
+      next.free();
       this.#refuse(`a new base would be good to ${bound.toExponential(1)} only, the present one to ${this.#baseBound.toExponential(1)}`);
       return { route: "ledger", because: `rows in the ledger; ${this.#refusal}`, predictedFlops: 0, countedFlops: 0 };
     }
-    const next = new System(base, world.states, sizes);
     if (old) {
       if (carry && track && this.tracked.valid && this.#catchUpIsCheaper(old, base)) {
         this.tracked.refresh(old, column);
@@ -264,7 +327,7 @@ export class Engine {
       if (this.trackedBound <= tolerance || this.#baseBound > tolerance) return;
     }
     if (system.events.length > 0) {
-      const outcome = this.#rebase(world(), false, "marginals afresh", true);
+      const outcome = runSteps(this.#rebase(world(), false, "marginals afresh", true));
       if (outcome.route === "ledger") {
         // The old base is the more exact one: blocks from it, one by one.
         this.tracked.fromLedger(this.system);
@@ -277,32 +340,28 @@ export class Engine {
   }
 
   free(): void {
-    this.#builder?.builder.free();
-    this.#builder = undefined;
+    this.#dropBackground();
     this.tracked.free();
     this.#system?.free();
     this.#system = undefined;
   }
 }
 
-/** Does to a system what an event did to another one. A drop of rows that its base holds becomes their removal; `rowsOf` gives them. */
-function replay(system: System, event: SystemEvent, rowsOf: ((measurement: number) => WhitenedRows) | undefined): void {
+/** Does to a system what an event did to another one. A drop of rows that its base holds becomes their removal. */
+function replay(system: System, event: SystemEvent): void {
   if (event.kind === "leaf") {
     system.addLeaf(event.leaf);
     return;
   }
-  const plus = event.kind === "rows" ? event.plus : [];
-  const minus = event.kind === "rows" ? event.minus : [];
-  if (event.kind === "drop") {
-    if (system.canDrop(event.measurement) || !rowsOf) {
-      system.drop(event.measurement);
-      return;
-    }
+  if (event.kind === "drop" && system.canDrop(event.owned.measurement)) {
+    system.drop(event.owned);
+    return;
   }
-  const out = event.kind === "drop" ? [{ rows: rowsOf!(event.measurement), measurement: event.measurement }] : minus;
-  system.loadBatch(plus, out);
+  const plus = event.kind === "rows" ? event.plus : [];
+  const minus = event.kind === "rows" ? event.minus : [event.owned];
+  system.loadBatch(plus, minus);
   system.forward();
-  system.enter(plus, out);
+  system.enter(plus, minus);
   system.clear();
-  if (!system.settle(plus, out)) throw new SingularBatch(undefined);
+  if (!system.settle(plus, minus)) throw new SingularBatch(undefined);
 }

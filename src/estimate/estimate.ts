@@ -1,13 +1,21 @@
 // The estimate: states and measurements as they come and go, and how sure every state is after each commit.
 import { Handle } from "../../bindings/handle.js";
-import { OptionError } from "../errors.js";
+import { runSteps, runStepsInSlices, type SliceOptions, type Steps } from "../../bindings/slices.js";
+import { NotPositiveDefiniteError, OptionError } from "../errors.js";
+import { factorize } from "../matrix/factorize.js";
+import { SymmetricMatrix } from "../matrix/symmetric-matrix.js";
 import { requireIndex, requireKnownOptions, requireWord } from "../support/checks.js";
 import { CommitUnderWayError, NotCommittedError, UncertainAnswerError, UndeterminedError, UnknownMeasurementError } from "./commit-errors.js";
 import { Engine, type Outcome, SingularBatch, type World } from "./engine.js";
 import { UnknownStateError } from "./errors.js";
+import { type Evaluation, evaluate } from "./evaluate.js";
+import { assembleInformation, type Information } from "./information.js";
 import { absorbStates } from "./leaf.js";
 import { crossBlocks, eachMarginal, jointCovariance } from "./marginals.js";
+import { restoreColumns } from "./noise.js";
 import { type CheckedMeasurement, type Linearization, type MeasurementInput, relinearize, type StateId, whiten } from "./rows.js";
+import { allRedundancies } from "./redundancy.js";
+import type { Matrix } from "./small-matrix.js";
 import type { OwnedRows } from "./system.js";
 import type { WhitenedRows } from "./whitened.js";
 
@@ -20,6 +28,8 @@ export interface EstimateOptions {
   tolerance?: number | undefined;
   /** What a question does when its bound passes the tolerance. Default `"throw"`; with `"answer"` see `health().bound`. */
   onDoubt?: "throw" | "answer" | undefined;
+  /** Milliseconds that a commit may take before a new base is built in slices, over several commits, while the old one goes on. */
+  latencyBudget?: number | undefined;
 }
 
 export interface CommitReport {
@@ -36,6 +46,37 @@ export interface CommitReport {
   readonly bound: number;
 }
 
+/** How far the numbers of an estimate can be trusted. */
+export interface Health {
+  /** Estimate of the condition number of the information matrix; infinite when f64 cannot factor it. */
+  readonly condition: number;
+  /** A bound on the relative error of marginals read now. */
+  readonly bound: number;
+  readonly tolerance: number;
+  /** Largest relative difference between sampled kept blocks and fresh ones. */
+  readonly drift: number;
+  /** Largest past trace of a kept block ÷ its trace now: what subtraction has cost in digits. */
+  readonly traceRatio: number;
+  readonly ledgerRows: number;
+  readonly ledgerBytes: number;
+  readonly leaves: number;
+  /** Why a new base that would pay was not taken, if so. */
+  readonly refusal: string | undefined;
+}
+
+export interface EstimateStatistics {
+  readonly states: number;
+  /** Unknowns. */
+  readonly order: number;
+  readonly measurements: number;
+  /** Flops, entries of L and bytes of the base's factor. */
+  readonly baseFlops: number;
+  readonly baseNonzeros: number;
+  readonly baseBytes: number;
+  /** Bytes of the ledger and leaves beyond it. */
+  readonly ledgerBytes: number;
+}
+
 interface StateRecord {
   readonly dimension: number;
   readonly name: string | undefined;
@@ -48,7 +89,7 @@ interface MeasurementRecord {
   standing: "pending" | "committed" | "withdrawn" | "absorbed";
 }
 
-const optionNames = ["track", "tolerance", "onDoubt"];
+const optionNames = ["track", "tolerance", "onDoubt", "latencyBudget"];
 
 /**
  * A least-squares estimate whose covariances stay current while states and measurements come and go.
@@ -62,6 +103,9 @@ export class Estimate {
   readonly #measurements: MeasurementRecord[] = [];
   /** What forgotten states have left behind, as rows on their neighbours; and their rows until the next base takes those in. */
   #condensed: WhitenedRows[] = [];
+  /** Weighted squares and degrees of freedom that have gone with them. */
+  #absorbedSquares = 0;
+  #absorbedFreedom = 0;
   #newStates: StateId[] = [];
   #added: MeasurementId[] = [];
   #withdrawn = new Set<MeasurementId>();
@@ -80,15 +124,17 @@ export class Estimate {
 
   constructor(options: EstimateOptions = {}) {
     requireKnownOptions("Estimate", options, optionNames);
-    const { track = "none", tolerance = 1e-6, onDoubt = "throw" } = options;
+    const { track = "none", tolerance = 1e-6, onDoubt = "throw", latencyBudget } = options;
     requireWord("track", track, ["all", "none"]);
     requireWord("onDoubt", onDoubt, ["throw", "answer"]);
     if (!(tolerance > 0)) throw new OptionError(`tolerance is ${tolerance}: it must be a number greater than 0.`, { tolerance });
+    if (latencyBudget !== undefined && !(latencyBudget > 0))
+      throw new OptionError(`latencyBudget is ${latencyBudget}: it must be a number of milliseconds greater than 0.`, { latencyBudget });
     this.#track = track;
     this.#tolerance = tolerance;
     this.#onDoubt = onDoubt;
     const states = this.#states;
-    const engine = new Engine((state) => states[state]!.dimension);
+    const engine = new Engine((state) => states[state]!.dimension, latencyBudget);
     this.#engine = engine;
     this.#handle = new Handle(this, "estimate", 1, () => engine.free());
   }
@@ -159,6 +205,18 @@ export class Estimate {
    * Sources: Woodbury (1950); see the kernel's ledger.
    */
   commit(): CommitReport {
+    return runSteps(this.#commitSteps());
+  }
+
+  /** `commit` whose new base, if it takes one, is factored in slices, between which the thread's other work goes on.
+   *  @param options signal: an abort leaves the estimate as it was, with what was pending still pending, and rejects with its reason;
+   *    onProgress: told fractions of a new base. Questions and changes throw until it has ended. */
+  async commitAsync(options: SliceOptions = {}): Promise<CommitReport> {
+    requireKnownOptions("commitAsync", options, ["signal", "onProgress"]);
+    return runStepsInSlices(this.#commitSteps(), options);
+  }
+
+  *#commitSteps(): Steps<CommitReport> {
     this.#requireIdle("commit");
     const plus: OwnedRows[] = [];
     const minus: OwnedRows[] = [];
@@ -177,7 +235,7 @@ export class Estimate {
       if (newStates.length + plus.length + minus.length > 0) {
         const measurements = this.#inForce + this.#added.length - this.#withdrawn.size;
         const column = this.#trackedColumn(false);
-        outcome = this.#engine.apply({ newStates, plus, minus }, () => this.#world(true), measurements, this.#track === "all", column);
+        outcome = yield* this.#engine.apply({ newStates, plus, minus }, () => this.#world(true), measurements, this.#track === "all", column);
       }
     } catch (error) {
       if (error instanceof SingularBatch) throw this.#undetermined();
@@ -223,7 +281,9 @@ export class Estimate {
       record.standing = "absorbed";
       this.#inForce -= 1;
     }
-    const rest = absorbStates(states, rows, (state) => this.#states[state]!.dimension);
+    const { rest, squares, freedom } = absorbStates(states, rows, (state) => this.#states[state]!.dimension);
+    this.#absorbedSquares += squares;
+    this.#absorbedFreedom += freedom;
     this.#condensed = this.#condensed.filter((r) => !reads(r));
     if (rest) this.#condensed.push(rest);
     for (const state of states) this.#states[state]!.standing = "forgotten";
@@ -380,6 +440,199 @@ export class Estimate {
     return column;
   }
 
+  /** J Σ Jᵀ of a linear function of two states: the covariance of its value under the given Jacobians (rows × dimension each), row-major.
+   *  For the difference of two points give −I and I. Cost: both paths to the root. */
+  relativeCovariance(a: StateId, b: StateId, jacobianA: Matrix, jacobianB: Matrix): Float64Array {
+    this.#requireIdle("relativeCovariance");
+    const { length: rows } = Array.isArray(jacobianA) ? jacobianA : { length: jacobianA.length / (this.#dimensionOf(a) ?? 1) };
+    const input = { states: [a, b], jacobians: [jacobianA, jacobianB], residual: new Float64Array(rows), standardDeviations: new Float64Array(rows).fill(1) };
+    const { blocks, states } = whiten(input, (state) => this.#dimensionOf(state));
+    for (const state of states) this.#slotOf(state, "relativeCovariance");
+    this.#requireSure(this.#engine.baseBound);
+    const { system } = this.#engine;
+    system.begin(rows);
+    system.loadRows(0, { states, rows, blocks, residual: input.residual });
+    system.forward();
+    const covariance = system.gram(rows);
+    system.clear();
+    return covariance;
+  }
+
+  /**
+   * What measurements would tell if they were added, without adding them.
+   * @param candidate one, or thousands: they share their solves.
+   * @returns for each: innovation ν, its covariance S = J Σ Jᵀ + R, νᵀ S⁻¹ ν, and the information gain ½ log det (R⁻¹ S) in nats.
+   * @throws as `addMeasurement`. Cost: a path for each distinct state, shared; little when marginals are kept.
+   * Source: Kalman (1960); the gain: Shannon entropy of a Gaussian.
+   */
+  evaluate(candidate: MeasurementInput): Evaluation;
+  evaluate(candidates: readonly MeasurementInput[]): Evaluation[];
+  evaluate(input: MeasurementInput | readonly MeasurementInput[]): Evaluation | Evaluation[] {
+    this.#requireIdle("evaluate");
+    const list = (Array.isArray(input) ? input : [input]) as readonly MeasurementInput[];
+    const candidates = list.map((candidate) => whiten(candidate, (state) => this.#dimensionOf(state)));
+    for (const { states } of candidates) for (const state of states) this.#slotOf(state, "evaluate");
+    const { system, tracked } = this.#ready();
+    const current = this.#track === "all" && tracked.isCurrent(system, this.#trackedColumn(true)) ? tracked : undefined;
+    this.#requireSure(current ? this.#engine.trackedBound : this.#engine.baseBound);
+    const results = evaluate(system, candidates, () => this.#wholeSolution(), current);
+    return Array.isArray(input) ? results : results[0]!;
+  }
+
+  #wholeSolution(): Float64Array {
+    this.#solution ??= this.#engine.system.estimate();
+    return this.#solution;
+  }
+
+  /** Residuals after the adjustment, measured minus predicted at the solution, in each measurement's units: of one measurement, or of all
+   *  in force one after another in order of arrival. */
+  residuals(measurement?: MeasurementId): Float64Array {
+    this.#requireIdle("residuals");
+    const records = measurement === undefined ? this.#committedMeasurements() : [this.#committedRecord(measurement)];
+    return concatenate(
+      records.map(({ rows }) => {
+        const v = this.#whiteResidual(rows);
+        restoreColumns(rows.noise, rows.rows, v);
+        return v;
+      }),
+    );
+  }
+
+  #whiteResidual({ states, blocks, rows, residual }: WhitenedRows): Float64Array {
+    const { system } = this.#ready();
+    const x = this.#wholeSolution();
+    const v = residual.slice();
+    for (const [k, state] of states.entries()) {
+      const first = system.positionOf(system.slotOf(state));
+      const block = blocks[k]!;
+      for (let u = 0; u < block.length / rows; u += 1) for (let q = 0; q < rows; q += 1) v[q]! -= block[u * rows + q]! * x[first + u]!;
+    }
+    return v;
+  }
+
+  /** The a posteriori variance factor: Σ vᵀ R⁻¹ v ÷ degrees of freedom, with both; NaN when there is none.
+   *  Expected 1 when the stated noise is right. */
+  varianceFactor(): { factor: number; weightedSquares: number; degreesOfFreedom: number } {
+    this.#requireIdle("varianceFactor");
+    let weightedSquares = this.#absorbedSquares;
+    let degreesOfFreedom = this.#absorbedFreedom;
+    for (const rows of [...this.#committedMeasurements().map((record) => record.rows), ...this.#condensed]) {
+      for (const value of this.#whiteResidual(rows)) weightedSquares += value * value;
+      degreesOfFreedom += rows.rows;
+    }
+    for (const id of this.#committedStates()) degreesOfFreedom -= this.#states[id]!.dimension;
+    return { factor: degreesOfFreedom > 0 ? weightedSquares / degreesOfFreedom : Number.NaN, weightedSquares, degreesOfFreedom };
+  }
+
+  /** The redundancy of one measurement: its rows − tr(J Σ Jᵀ R⁻¹), from 0 (no other controls it) to its rows. Cost: its paths. */
+  redundancy(measurement: MeasurementId): number {
+    this.#requireIdle("redundancy");
+    const { rows } = this.#committedRecord(measurement);
+    this.#requireSure(this.#engine.baseBound);
+    const { system } = this.#ready();
+    system.begin(rows.rows);
+    system.loadRows(0, rows);
+    system.forward();
+    const gram = system.gram(rows.rows);
+    system.clear();
+    let redundancy = rows.rows;
+    for (let q = 0; q < rows.rows; q += 1) redundancy -= gram[q * rows.rows + q]!;
+    return redundancy;
+  }
+
+  /** The redundancy of every measurement in force, in order of arrival. They add up to the degrees of freedom.
+   *  Cost: one factor and one selected inverse for all. */
+  redundancies(): Float64Array {
+    this.#requireIdle("redundancies");
+    this.#ready();
+    const { information, place } = this.#informationNow();
+    return allRedundancies(
+      information,
+      place,
+      this.#committedMeasurements().map(({ rows }) => rows),
+    );
+  }
+
+  #informationNow(): { information: Information; place: (state: number) => number } {
+    const { states, rows } = this.#world(false);
+    const places: number[] = [];
+    for (const [k, state] of states.entries()) places[state] = k;
+    const place = (state: number): number => places[state]!;
+    return { information: assembleInformation(Int32Array.from(states, (state) => this.#states[state]!.dimension), place, rows), place };
+  }
+
+  /** log det of the information matrix. Cost: a logarithm an unknown; a factor while forgotten states are still in the base. */
+  logDeterminant(): number {
+    this.#requireIdle("logDeterminant");
+    const { system } = this.#ready();
+    if (system.slots === this.#alive) return system.logDeterminant();
+    const { order, columnPointers, rowIndices, values, blockSizes } = this.#informationNow().information;
+    const factor = factorize(SymmetricMatrix.fromColumns({ order, columnPointers, rowIndices, values }), { blockSizes });
+    try {
+      return factor.logDeterminant();
+    } finally {
+      factor.dispose();
+    }
+  }
+
+  /**
+   * How far the numbers can be trusted.
+   * @param options samples: states whose kept block is compared with a fresh one (default 8, spread evenly).
+   * Cost: a factor for the condition (Higham, Tisseur 2000), a path a sample.
+   */
+  health(options: { samples?: number | undefined } = {}): Health {
+    this.#requireIdle("health");
+    requireKnownOptions("health", options, ["samples"]);
+    const { samples = 8 } = options;
+    requireIndex("samples", samples, 0, 1e6);
+    const engine = this.#ready();
+    const { system, tracked } = engine;
+    let drift = 0;
+    if (tracked.valid && tracked.owed(system) === 0 && tracked.slots === system.slots) {
+      const slots = Array.from({ length: Math.min(samples, system.slots) }, (_, k) => Math.floor((k * system.slots) / Math.min(samples, system.slots)));
+      eachMarginal(system, slots, (k, fresh) => {
+        const kept = tracked.block(slots[k]!);
+        const size = Math.max(...fresh.map(Math.abs));
+        for (const [at, value] of fresh.entries()) drift = Math.max(drift, Math.abs(kept[at]! - value) / size);
+      });
+    }
+    const { order, columnPointers, rowIndices, values, blockSizes } = this.#informationNow().information;
+    let condition = Number.POSITIVE_INFINITY;
+    try {
+      const factor = factorize(SymmetricMatrix.fromColumns({ order, columnPointers, rowIndices, values }), { blockSizes });
+      condition = 1 / factor.reciprocalCondition();
+      factor.dispose();
+    } catch (error) {
+      if (!(error instanceof NotPositiveDefiniteError)) throw error; // leaves and ledger can hold what f64 cannot factor
+    }
+    return {
+      condition,
+      bound: this.#report().bound,
+      tolerance: this.#tolerance,
+      drift,
+      traceRatio: tracked.valid ? tracked.ratio : 1,
+      ledgerRows: system.added + system.removed,
+      ledgerBytes: system.bytes,
+      leaves: system.slots - system.base.stateOfSlot.length,
+      refusal: engine.refusal,
+    };
+  }
+
+  /** Sizes and costs of what is held. */
+  get statistics(): EstimateStatistics {
+    this.#requireIdle("statistics");
+    const { flops, nonzeros, bytes } = this.#engine.isEmpty ? { flops: 0, nonzeros: 0, bytes: 0 } : this.#engine.system.base.costs;
+    return {
+      states: this.#alive,
+      order: this.#committedStates().reduce((sum, id) => sum + this.#states[id]!.dimension, 0),
+      measurements: this.#inForce,
+      baseFlops: flops,
+      baseNonzeros: nonzeros,
+      baseBytes: bytes,
+      ledgerBytes: this.#engine.isEmpty ? 0 : this.#engine.system.bytes,
+    };
+  }
+
   dispose(): void {
     this.#handle.dispose();
   }
@@ -436,6 +689,19 @@ export class Estimate {
     if (!record || record.standing === "forgotten") throw new UnknownStateError(state, call);
     if (record.standing === "pending") throw new NotCommittedError(state);
     return this.#engine.system.slotOf(state);
+  }
+
+  #committedMeasurements(): MeasurementRecord[] {
+    return this.#measurements.filter(({ standing }) => standing === "committed");
+  }
+
+  #committedRecord(measurement: MeasurementId): MeasurementRecord {
+    const record = this.#measurements[measurement];
+    if (!record || record.standing === "pending") throw new UnknownMeasurementError(measurement, "was never added");
+    if (record.standing === "withdrawn") throw new UnknownMeasurementError(measurement, "was withdrawn already");
+    if (record.standing === "absorbed")
+      throw new UnknownMeasurementError(measurement, "reads a forgotten state, which has taken its information along");
+    return record;
   }
 
   #inForceRecord(measurement: MeasurementId): MeasurementRecord {

@@ -26,13 +26,12 @@ function splitLeaf(
   dimension: number,
   pool: readonly WhitenedRows[],
   dimensionOf: (state: number) => number,
-  tolerance: number = RANK_TOLERANCE,
 ): { leaf: Leaf; rest: WhitenedRows | undefined } | undefined {
   const d = dimension;
   const states: number[] = [];
   for (const rows of pool) for (const s of rows.states) if (s !== state && !states.includes(s)) states.push(s);
   const { a, m, columns, columnOf } = gather([state, ...states], pool, dimensionOf);
-  if (m < d || !reflect(a, m, d, columns + 1, tolerance)) return undefined;
+  if (m < d || !reflect(a, m, d, columns + 1, RANK_TOLERANCE)) return undefined;
 
   const numbers = new Float64Array(d * columns);
   for (let j = 0; j < d; j += 1) {
@@ -153,38 +152,56 @@ export function splitLeaves(
   return { leaves: leaves.reverse(), rest: pool };
 }
 
+/** What is left of forgotten states: rows on their neighbours, and the weighted squares and degrees of freedom that went with them. */
+export interface Absorbed {
+  readonly rest: WhitenedRows | undefined;
+  readonly squares: number;
+  readonly freedom: number;
+}
+
 /**
  * What `rows` say about other states once `states` are left out: their information is kept, the states are not (Schur complement in
- * square-root form).
- * @returns at most as many rows as the other states have unknowns, plus one for the residual left over.
+ * square-root form; Golub, Van Loan, "Matrix Computations", section 3.2, on rotated rows).
+ * @returns at most as many rows as the other states have unknowns. Cost: O(rows × unknowns²) of the neighbourhood.
  */
-export function absorbStates(
-  states: readonly number[],
-  rows: readonly WhitenedRows[],
-  dimensionOf: (state: number) => number,
-): WhitenedRows | undefined {
+export function absorbStates(states: readonly number[], rows: readonly WhitenedRows[], dimensionOf: (state: number) => number): Absorbed {
   let pool = [...rows];
+  let squares = 0;
+  let freedom = 0;
   for (const state of states) {
     const reading = pool.filter((r) => r.states.includes(state));
     if (reading.length === 0) continue;
-    const rest = splitLeaf(state, dimensionOf(state), reading, dimensionOf, 0)?.rest;
     pool = pool.filter((r) => !r.states.includes(state));
-    if (rest) pool.push(rest);
+    const neighbours = [...new Set(reading.flatMap((r) => r.states))].filter((s) => s !== state);
+    const { a, m, columns } = gather([state, ...neighbours], reading, dimensionOf);
+    const d = dimensionOf(state);
+    const kept = Math.min(m, columns);
+    reflect(a, m, Math.min(m, columns), columns + 1, 0);
+    for (let q = columns; q < m; q += 1) squares += a[columns * m + q]! ** 2;
+    freedom += Math.max(0, m - columns);
+    if (neighbours.length === 0) continue;
+    let first = d;
+    const blocks = neighbours.map((s) => {
+      const block = new Float64Array((kept - d) * dimensionOf(s));
+      for (let u = 0; u < dimensionOf(s); u += 1, first += 1) block.set(a.subarray(first * m + d, first * m + kept), u * (kept - d));
+      return block;
+    });
+    if (kept > d) pool.push({ states: neighbours, rows: kept - d, blocks, residual: a.slice(columns * m + d, columns * m + kept) });
   }
-  return pool.length > 0 ? stack(pool, dimensionOf) : undefined;
-}
-
-/** Rows on the same states, stacked and, when there are more rows than unknowns, rotated to as few as say the same. */
-function stack(pool: readonly WhitenedRows[], dimensionOf: (state: number) => number): WhitenedRows {
-  const states = [...new Set(pool.flatMap((r) => r.states))];
-  const { a, m, columns, columnOf } = gather(states, pool, dimensionOf);
+  if (pool.length <= 1) return { rest: pool[0], squares, freedom };
+  const all = [...new Set(pool.flatMap((r) => r.states))];
+  const { a, m, columns, columnOf } = gather(all, pool, dimensionOf);
   const kept = Math.min(m, columns);
-  if (m > columns) reflect(a, m, columns, columns + 1, 0);
-  const blocks = states.map((s) => {
+  if (m > columns) {
+    reflect(a, m, columns, columns + 1, 0);
+    for (let q = columns; q < m; q += 1) squares += a[columns * m + q]! ** 2;
+    freedom += m - columns;
+  }
+  const blocks = all.map((s) => {
     const first = columnOf.get(s)!;
     const block = new Float64Array(kept * dimensionOf(s));
     for (let u = 0; u < dimensionOf(s); u += 1) block.set(a.subarray((first + u) * m, (first + u) * m + kept), u * kept);
     return block;
   });
-  return { states, rows: kept, blocks, residual: a.slice(columns * m, columns * m + kept) };
+  return { rest: { states: all, rows: kept, blocks, residual: a.slice(columns * m, columns * m + kept) }, squares, freedom };
 }

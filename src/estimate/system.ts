@@ -11,7 +11,7 @@ import type { WhitenedRows } from "./whitened.js";
 export type SystemEvent =
   | { readonly kind: "leaf"; readonly leaf: Leaf }
   | { readonly kind: "rows"; readonly plus: readonly OwnedRows[]; readonly minus: readonly OwnedRows[] }
-  | { readonly kind: "drop"; readonly measurement: number };
+  | { readonly kind: "drop"; readonly owned: OwnedRows };
 
 /** Rows with the measurement they are all of, or −1 when a rotation has mixed several. */
 export interface OwnedRows {
@@ -214,12 +214,17 @@ export class System {
     return this.removed === 0 && this.#owner.includes(measurement);
   }
 
-  drop(measurement: number): void {
+  drop(owned: OwnedRows): void {
+    const { measurement } = owned;
     for (let id = this.#owner.lastIndexOf(measurement); id >= 0; id = this.#owner.lastIndexOf(measurement)) {
       this.#k.dropRow(this.base.ledger, id);
       this.#owner.splice(id, 1);
     }
-    this.events.push({ kind: "drop", measurement });
+    this.events.push({ kind: "drop", owned });
+  }
+
+  logDeterminant(): number {
+    return this.#k.ledgerLogDeterminant(this.base.ledger);
   }
 
   /** Back to the base alone: no leaf, no row, no event. */
