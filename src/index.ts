@@ -4,7 +4,14 @@ export type { SliceOptions } from "../bindings/slices.js";
 export * from "./errors.js";
 export * from "./estimate/commit-errors.js";
 export * from "./estimate/errors.js";
-export { type CommitReport, Estimate, type EstimateOptions, type EstimateStatistics, type Health, type MeasurementId } from "./estimate/estimate.js";
+export {
+  type CommitReport,
+  Estimate,
+  type EstimateOptions,
+  type EstimateStatistics,
+  type Health,
+  type MeasurementId,
+} from "./estimate/estimate.js";
 export type { Evaluation } from "./estimate/evaluate.js";
 export type { Linearization, MeasurementInput, StateId } from "./estimate/rows.js";
 export { CholeskyFactor, type FactorStatistics, type SelectedInverseOptions } from "./matrix/cholesky-factor.js";

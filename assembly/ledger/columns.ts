@@ -18,7 +18,7 @@ import { solveSigned, weighSigned } from "./signed";
 
 /** Makes room for `columns` right-hand sides and forgets those before. OK or OUT_OF_MEMORY. Call it first; then load. */
 export function beginColumns(l: Ledger, columns: i32): i32 {
-  const s = l.factor.symbolic, need = <f64>columns * <f64>l.positions;
+  const need = <f64>columns * <f64>l.positions;
   clearColumns(l);
   if (need > l.xRoom) {
     const room = need + <f64>(columns * (l.positionRoom - l.positions)), x = regrow(l.x, 0, room, 3);
@@ -27,13 +27,7 @@ export function beginColumns(l: Ledger, columns: i32): i32 {
     l.x = x;
     l.xRoom = room;
   }
-  const gather = <f64>columns * <f64>max(s.deepest, s.widest) + <f64>(columns * (l.added + l.removed + 16));
-  if (gather > l.bufferRoom) {
-    const buffer = regrow(l.buffer, 0, 2 * gather, 3);
-    if (!buffer) return OUT_OF_MEMORY;
-    l.buffer = buffer;
-    l.bufferRoom = 2 * gather;
-  }
+  if (reserveBuffer(l, columns) != OK) return OUT_OF_MEMORY;
   if (columns > l.fColumns) {
     const added = allocateArray(2 * <f64>columns * <f64>l.addedRoom, 3), removed = allocateArray(2 * <f64>columns * <f64>l.removedRoom, 3);
     if (!added || !removed) { release(added); release(removed); return OUT_OF_MEMORY; }
@@ -51,6 +45,17 @@ export function beginColumns(l: Ledger, columns: i32): i32 {
     l.gramRoom = columns;
   }
   l.columns = columns;
+  return OK;
+}
+
+/** Room to gather `columns` columns at the rows below a supernode, and at all rows that a chunk may hold, whether they count or not. */
+export function reserveBuffer(l: Ledger, columns: i32): i32 {
+  const s = l.factor.symbolic, room = <f64>columns * (<f64>max(s.deepest, s.widest) + <f64>(l.addedRoom + l.removedRoom));
+  if (room <= l.bufferRoom) return OK;
+  const buffer = regrow(l.buffer, 0, 2 * room, 3);
+  if (!buffer) return OUT_OF_MEMORY;
+  l.buffer = buffer;
+  l.bufferRoom = 2 * room;
   return OK;
 }
 

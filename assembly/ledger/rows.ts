@@ -1,7 +1,7 @@
 /** Rows entering and leaving the ledger: the border of S and of its factor, and the residual of each row. */
 import { atF64, f64At, setF64 } from "../memory/access";
 import { OK, OUT_OF_MEMORY } from "../memory/status";
-import { baseValues, forgetColumn, keepColumns, reserveChunks, trimColumns } from "./columns";
+import { baseValues, forgetColumn, keepColumns, reserveBuffer, reserveChunks, trimColumns } from "./columns";
 import { Ledger } from "./ledger";
 import { factorSigned, reserveRows, solveSigned } from "./signed";
 
@@ -11,7 +11,7 @@ import { factorSigned, reserveRows, solveSigned } from "./signed";
  *  OK, or OUT_OF_MEMORY with nothing changed. */
 export function enterRows(l: Ledger, plus: i32, minus: i32, residual: usize): i32 {
   const a = l.added, r = l.removed, k = l.columns;
-  if (reserveRows(l, a + plus, r + minus) != OK || reserveChunks(l, plus + minus) != OK) return OUT_OF_MEMORY;
+  if (reserveRows(l, a + plus, r + minus) != OK || reserveBuffer(l, k) != OK || reserveChunks(l, plus + minus) != OK) return OUT_OF_MEMORY;
   const ld = l.addedRoom, ldr = l.removedRoom;
   for (let q = 0; q < plus; ++q) {
     for (let i = 0; i < a; ++i) setF64(l.sAdded, i * ld + a + q, f64At(l.cAdded, q * ld + i));

@@ -1,10 +1,11 @@
 // What a commit does to base, leaves, ledger and tracked marginals: the route it takes, and back again when it cannot be completed.
-import { runSteps, type SlicedCall, type Steps } from "../../bindings/slices.js";
+
 import { MemoryLimitError } from "../../bindings/errors.js";
 import { status } from "../../bindings/kernel.js";
+import { runSteps, type SlicedCall, type Steps } from "../../bindings/slices.js";
 import { type Base, baseSteps, isSingular, type Singular } from "./base.js";
 import { assembleInformation } from "./information.js";
-import { splitLeaves } from "./leaf.js";
+import { type Leaf, splitLeaves } from "./leaf.js";
 import { backwardCost, carryingCost, inverseCost, rebaseCost, rebasePays } from "./policy.js";
 import { type OwnedRows, System, type SystemEvent } from "./system.js";
 import { Tracked } from "./tracked.js";
@@ -124,7 +125,7 @@ export class Engine {
     if (rowCount > MOST_ROWS) return yield* this.#rebase(world(), track, `${rowCount} rows at once`, false);
 
     const before = this.system.events.length;
-    const flops = this.#intoLedger(arriving, minus, () => split.leaves.forEach((leaf) => this.system.addLeaf(leaf)), track, column);
+    const flops = this.#intoLedger(arriving, minus, split.leaves, track, column);
     const outcome = this.#ledgerOutcome(rowCount, flops, split.leaves.length, track);
     const reason = this.#wishForBase(measurements);
     if (this.#latencyBudget !== undefined) return this.#inBackground(outcome, reason, world, track, column, begun + this.#latencyBudget);
@@ -132,13 +133,13 @@ export class Engine {
   }
 
   /** Leaves, drops and rows; on any failure the system is put back as it was. */
-  #intoLedger(plus: readonly OwnedRows[], minus: readonly OwnedRows[], addLeaves: () => void, track: boolean, column: number): number {
+  #intoLedger(plus: readonly OwnedRows[], minus: readonly OwnedRows[], leaves: readonly Leaf[], track: boolean, column: number): number {
     const system = this.system;
     const before = system.events.length;
     const slots = system.slots;
     let touchedTracked = false;
     try {
-      addLeaves();
+      for (const leaf of leaves) system.addLeaf(leaf);
       const droppable = minus.length > 0 && plus.length === 0 && minus.every(({ measurement }) => system.canDrop(measurement));
       const signed = minus.length > 0 || system.removed > 0;
       const keepTracked = signed && track && this.tracked.valid;
@@ -218,7 +219,14 @@ export class Engine {
   }
 
   /** Spends what the deadline leaves on a new base. The old one goes on until the new one has caught up with it. */
-  #inBackground(ledger: Outcome, reason: string | undefined, world: () => World, track: boolean, column: number, deadline: number): Outcome {
+  #inBackground(
+    ledger: Outcome,
+    reason: string | undefined,
+    world: () => World,
+    track: boolean,
+    column: number,
+    deadline: number,
+  ): Outcome {
     const { system } = this;
     if (!this.#background) {
       if (!reason) return ledger;
@@ -226,7 +234,14 @@ export class Engine {
       const sizes = Int32Array.from(all.states, (state) => this.#dimensionOf(state));
       const steps = baseSteps(this.#assemble(all, sizes), this.#queries);
       const first = steps.next(status.ok);
-      this.#background = { steps, call: first.done ? undefined : first.value, world: all, sizes, replayed: system.events.length, next: undefined };
+      this.#background = {
+        steps,
+        call: first.done ? undefined : first.value,
+        world: all,
+        sizes,
+        replayed: system.events.length,
+        next: undefined,
+      };
     }
     const job = this.#background;
     while (performance.now() < deadline) {

@@ -5,7 +5,13 @@ import { NotPositiveDefiniteError, OptionError } from "../errors.js";
 import { factorize } from "../matrix/factorize.js";
 import { SymmetricMatrix } from "../matrix/symmetric-matrix.js";
 import { requireIndex, requireKnownOptions, requireWord } from "../support/checks.js";
-import { CommitUnderWayError, NotCommittedError, UncertainAnswerError, UndeterminedError, UnknownMeasurementError } from "./commit-errors.js";
+import {
+  CommitUnderWayError,
+  NotCommittedError,
+  UncertainAnswerError,
+  UndeterminedError,
+  UnknownMeasurementError,
+} from "./commit-errors.js";
 import { Engine, type Outcome, SingularBatch, type World } from "./engine.js";
 import { UnknownStateError } from "./errors.js";
 import { type Evaluation, evaluate } from "./evaluate.js";
@@ -13,8 +19,8 @@ import { assembleInformation, type Information } from "./information.js";
 import { absorbStates } from "./leaf.js";
 import { crossBlocks, eachMarginal, jointCovariance } from "./marginals.js";
 import { restoreColumns } from "./noise.js";
-import { type CheckedMeasurement, type Linearization, type MeasurementInput, relinearize, type StateId, whiten } from "./rows.js";
 import { allRedundancies } from "./redundancy.js";
+import { type CheckedMeasurement, type Linearization, type MeasurementInput, relinearize, type StateId, whiten } from "./rows.js";
 import type { Matrix } from "./small-matrix.js";
 import type { OwnedRows } from "./system.js";
 import type { WhitenedRows } from "./whitened.js";
@@ -235,7 +241,13 @@ export class Estimate {
       if (newStates.length + plus.length + minus.length > 0) {
         const measurements = this.#inForce + this.#added.length - this.#withdrawn.size;
         const column = this.#trackedColumn(false);
-        outcome = yield* this.#engine.apply({ newStates, plus, minus }, () => this.#world(true), measurements, this.#track === "all", column);
+        outcome = yield* this.#engine.apply(
+          { newStates, plus, minus },
+          () => this.#world(true),
+          measurements,
+          this.#track === "all",
+          column,
+        );
       }
     } catch (error) {
       if (error instanceof SingularBatch) throw this.#undetermined();
@@ -320,7 +332,8 @@ export class Estimate {
     requireWord("track", states, ["all", "none"]);
     requireKnownOptions("track", options, ["column"]);
     const { column } = options;
-    if (column !== undefined && column !== "newest" && this.#dimensionOf(column) === undefined) throw new UnknownStateError(column, "track");
+    if (column !== undefined && column !== "newest" && this.#dimensionOf(column) === undefined)
+      throw new UnknownStateError(column, "track");
     this.#track = states;
     this.#column = column;
   }
@@ -427,7 +440,13 @@ export class Estimate {
     const kept = tracked.isCurrent(system, state) ? tracked.wholeColumn(system, d) : undefined;
     this.#requireSure(kept ? this.#engine.trackedBound : this.#engine.baseBound);
     const ids = this.#committedStates();
-    const parts = kept ? [] : crossBlocks(system, slot, ids.map((id) => system.slotOf(id)));
+    const parts = kept
+      ? []
+      : crossBlocks(
+          system,
+          slot,
+          ids.map((id) => system.slotOf(id)),
+        );
     const order = ids.reduce((sum, id) => sum + this.#states[id]!.dimension, 0);
     const column = new Float64Array(order * d);
     let row = 0;
@@ -445,7 +464,12 @@ export class Estimate {
   relativeCovariance(a: StateId, b: StateId, jacobianA: Matrix, jacobianB: Matrix): Float64Array {
     this.#requireIdle("relativeCovariance");
     const { length: rows } = Array.isArray(jacobianA) ? jacobianA : { length: jacobianA.length / (this.#dimensionOf(a) ?? 1) };
-    const input = { states: [a, b], jacobians: [jacobianA, jacobianB], residual: new Float64Array(rows), standardDeviations: new Float64Array(rows).fill(1) };
+    const input = {
+      states: [a, b],
+      jacobians: [jacobianA, jacobianB],
+      residual: new Float64Array(rows),
+      standardDeviations: new Float64Array(rows).fill(1),
+    };
     const { blocks, states } = whiten(input, (state) => this.#dimensionOf(state));
     for (const state of states) this.#slotOf(state, "relativeCovariance");
     this.#requireSure(this.#engine.baseBound);
@@ -558,7 +582,14 @@ export class Estimate {
     const places: number[] = [];
     for (const [k, state] of states.entries()) places[state] = k;
     const place = (state: number): number => places[state]!;
-    return { information: assembleInformation(Int32Array.from(states, (state) => this.#states[state]!.dimension), place, rows), place };
+    return {
+      information: assembleInformation(
+        Int32Array.from(states, (state) => this.#states[state]!.dimension),
+        place,
+        rows,
+      ),
+      place,
+    };
   }
 
   /** log det of the information matrix. Cost: a logarithm an unknown; a factor while forgotten states are still in the base. */
@@ -589,7 +620,9 @@ export class Estimate {
     const { system, tracked } = engine;
     let drift = 0;
     if (tracked.valid && tracked.owed(system) === 0 && tracked.slots === system.slots) {
-      const slots = Array.from({ length: Math.min(samples, system.slots) }, (_, k) => Math.floor((k * system.slots) / Math.min(samples, system.slots)));
+      const slots = Array.from({ length: Math.min(samples, system.slots) }, (_, k) =>
+        Math.floor((k * system.slots) / Math.min(samples, system.slots)),
+      );
       eachMarginal(system, slots, (k, fresh) => {
         const kept = tracked.block(slots[k]!);
         const size = Math.max(...fresh.map(Math.abs));

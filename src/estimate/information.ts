@@ -103,7 +103,16 @@ export function assembleInformation(sizes: Int32Array, place: (state: number) =>
         const pb = place(of[b]!);
         const swap = pa < pb;
         const columnState = swap ? pa : pb;
-        addBlock(values, columnPointers, first[columnState]!, sizes[columnState]!, pa === pb ? -1 : offset[at]!, swap ? blockA : blocks[b]!, swap ? blocks[b]! : blockA, m);
+        addBlock(
+          values,
+          columnPointers,
+          first[columnState]!,
+          sizes[columnState]!,
+          pa === pb ? -1 : offset[at]!,
+          swap ? blockA : blocks[b]!,
+          swap ? blocks[b]! : blockA,
+          m,
+        );
         at += 1;
       }
     }

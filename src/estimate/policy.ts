@@ -52,7 +52,8 @@ export function carryingCost(columns: number, ledgerEntries: number, leafNumbers
 export const backwardCost = (columns: number, nonzeros: number): number => columns * nonzeros * nanoseconds.solveEntry;
 
 /** Nanoseconds of the selected inverse: about 2.3 times its factor. */
-export const inverseCost = (base: BaseCosts): number => 2.3 * (base.flops * nanoseconds.factorFlop + base.nonzeros * nanoseconds.factorEntry);
+export const inverseCost = (base: BaseCosts): number =>
+  2.3 * (base.flops * nanoseconds.factorFlop + base.nonzeros * nanoseconds.factorEntry);
 
 /** Whether a new base pays: what carrying on has cost beyond it since the last one comes to its price, so the total is at most twice
  *  that of the best policy that knows the future (the ski-rental bound; Karlin, Manasse, Rudolph, Sleator 1988); or the ledger has

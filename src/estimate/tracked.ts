@@ -341,4 +341,3 @@ export class Tracked {
     this.valid = false;
   }
 }
-
