@@ -2,7 +2,7 @@
 import { status } from "./kernel.js";
 
 /** One long call: `advance` does about `budget` nanoseconds of work and returns a status, `progress` tells the share done. */
-interface SlicedCall {
+export interface SlicedCall {
   advance(budget: number): number;
   progress(): number;
   /** The shares of the whole work at which this call begins and ends; 0 and 1 when it is the whole. */
