@@ -98,10 +98,12 @@ const both = (h: number, at: (h: number) => PlanPoint): PlanPoint[] => (h === 0 
 
 /** More loci than this add nothing to a starting value. */
 const enoughLoci = 8;
-/** The second-best place must fit this many times worse than the best, root mean square, or the readings do not tell them apart. */
-const clearMargin = 10;
-/** Two places nearer than this share of the figure's size are one. */
+/** A second place is as good when its misfit, root mean square, is within this many times the best one's. */
+const equalFit = 4;
+/** Places nearer than this share of the figure's size are one… */
 const samePlace = 1e-3;
+/** …and so are places nearer than this many times the best one's misfit: rough known points blur where loci meet. */
+const blur = 20;
 
 /** The point where the loci meet; `"ambiguous"` when another one fits as well, `undefined` when they do not meet. */
 export function meetingPoint(loci: readonly Locus[]): PlanPoint | "ambiguous" | undefined {
@@ -114,7 +116,7 @@ export function meetingPoint(loci: readonly Locus[]): PlanPoint | "ambiguous" | 
         if (Number.isFinite(score)) candidates.push({ point, score });
       }
   const size = figureSize(used);
-  const apart = (a: PlanPoint, b: PlanPoint) => Math.hypot(a[0] - b[0], a[1] - b[1]) > samePlace * size;
+  const apart = (a: PlanPoint, b: PlanPoint) => separation(a, b) > samePlace * size;
   // Arcs through one mark meet there too, and no point is sought on a mark.
   const offMarks = candidates.filter(({ point }) => used.every(({ marks }) => marks.every((mark) => apart(point, mark))));
   const sorted = offMarks.sort((a, b) => a.score - b.score);
@@ -122,13 +124,18 @@ export function meetingPoint(loci: readonly Locus[]): PlanPoint | "ambiguous" | 
   if (best === undefined) return undefined;
   // Both scores of an undecided pair are rounding: the floor keeps their ratio from deciding.
   const floor = 1e-6 * size;
-  const rival = sorted.find(({ point }) => apart(point, best.point));
-  if (rival !== undefined && rival.score < clearMargin * Math.max(best.score, floor)) return "ambiguous";
+  const misfit = Math.max(best.score, floor);
+  const rival = sorted.find(
+    ({ point, score }) => score < equalFit * misfit && apart(point, best.point) && separation(point, best.point) > blur * misfit,
+  );
+  if (rival !== undefined) return "ambiguous";
   return best.point;
 }
 
+const separation = (a: PlanPoint, b: PlanPoint): number => Math.hypot(a[0] - b[0], a[1] - b[1]);
+
 function figureSize(loci: readonly Locus[]): number {
   const marks = loci.flatMap((locus) => locus.marks);
-  const fromFirst = marks.map(([x, y]) => Math.hypot(x - marks[0]![0], y - marks[0]![1]));
+  const fromFirst = marks.map((mark) => separation(mark, marks[0]!));
   return Math.max(0, ...loci.map(({ length }) => length), ...fromFirst);
 }
