@@ -15,12 +15,12 @@ const along = { x: Math.sin(azimuth), y: Math.cos(azimuth) };
 export const seaward: { readonly x: number; readonly y: number } = { x: along.y, y: -along.x };
 
 /** A place by its distance along the quay from the west end, its distance back from the quay's face, and its height. */
-export function quayPlace(distance: number, back: number, height: number): [number, number, number] {
+function quayPlace(distance: number, back: number, height: number): [number, number, number] {
   return [westEnd.x + distance * along.x - back * seaward.x, westEnd.y + distance * along.y - back * seaward.y, height];
 }
 
-export const bays = 30;
-export const bayLength = 24;
+const bays = 30;
+const bayLength = 24;
 
 export interface Mark extends Place {
   readonly bay: number;
