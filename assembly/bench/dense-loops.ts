@@ -1,4 +1,4 @@
-// Loops around the dense kernels, built by bench/dense.mjs alone, so that small sizes are timed without calls from JavaScript.
+// Loops around the dense kernels, built for the section dense of the bench alone, so that small sizes are timed without calls from JavaScript.
 import { factorPanel } from "../dense/factor-panel";
 import { triangularize } from "../dense/householder";
 import { inverseOfProduct } from "../dense/inverse-of-product";
