@@ -11,8 +11,8 @@ const WINDOW = 4096;
 /** Step through a window: odd, near the golden section of it, so that successive visits lie far apart. */
 const STRIDE = 2531;
 /** Budget units (about 1 ns each) for a vertex and an entry, of matching and contraction together. */
-const VERTEX_COST: f64 = 6;
-const ENTRY_COST: f64 = 4;
+const VERTEX_COST: f64 = 12;
+const ENTRY_COST: f64 = 9;
 
 /** A graph in a ladder of ever coarser ones. */
 @unmanaged

@@ -17,19 +17,27 @@ import { Graph } from "./graph";
  *  nets, grids and patrols. */
 const SPARE_ROOM = 7;
 /** Budget units (about 1 ns each) for a pivot and for an entry read: medians over nets and grids of 10⁴ to 10⁶ vertices. */
-const PIVOT_COST: f64 = 60;
-const ENTRY_COST: f64 = 1.6;
+const PIVOT_COST: f64 = 150;
+const ENTRY_COST: f64 = 5;
+/** The same for a vertex put into a degree list. */
+const LIST_COST: f64 = 10;
 
 /** The same for a whole order, for a vertex and for an entry of the graph. */
 const VERTEX_WORK: f64 = 100;
 const ENTRY_WORK: f64 = 20;
-const LOAD_COST: f64 = 20; // the same for a vertex that is taken over from the graph
-/** Vertices taken over before the budget is looked at. */
-const LOAD_CHUNK = 8192;
+/** The same for a vertex that is taken over from the graph. */
+const LOAD_COST: f64 = 30;
+/** Vertices handled before the budget is looked at. */
+const CHUNK = 8192;
 
 const UNLISTED: u8 = 0;
 const LISTED: u8 = 1;
 const PENDING: u8 = 2; // touched in this pass, listed at its end
+
+// Stages of a pass.
+const LIST_TOUCHED = 0;
+const LIST_CLASS = 1;
+const PIVOTS = 2;
 
 @unmanaged
 export class MinimumDegree {
@@ -70,6 +78,8 @@ export class MinimumDegree {
   leastDegree: i32;
   pending: usize;
   pendingCount: i32;
+  stage: i32;
+  listed: i32; // of those pending
   bucket: usize;
   bucketMask: i32;
   // Classes. classes i32[n] is the caller's, or 0 for one class. byClass i32[n]: vertices sorted by class.
@@ -148,16 +158,19 @@ export function minimumDegreeAdvance(m: MinimumDegree, budget: f64): i32 {
   }
   while (m.verticesLeft > 0) {
     if (m.spent >= stop) return RUNNING;
-    const p = i32At(m.head, m.leastDegree);
-    if (p >= 0) eliminate(m, p);
-    else if (!beginPass(m)) openClass(m);
+    if (m.stage == PIVOTS) {
+      const p = i32At(m.head, m.leastDegree);
+      if (p >= 0) eliminate(m, p);
+      else { m.stage = LIST_TOUCHED; m.listed = 0; }
+    } else if (m.stage == LIST_TOUCHED) listTouched(m);
+    else listClass(m);
   }
   return OK;
 }
 
 /** Copies the lists of some more vertices, and prepares as large a part of what is not numbered by vertices. */
 function loadSome(m: MinimumDegree): void {
-  const graph = m.graph, n = m.n, from = m.loaded, to = min(from + LOAD_CHUNK, n);
+  const graph = m.graph, n = m.n, from = m.loaded, to = min(from + CHUNK, n);
   const first = i32At(graph.start, from), end = i32At(graph.start, to), bytes = <usize>(to - from) << 2;
   memory.copy(atI32(m.list, first), atI32(graph.adjacent, first), <usize>(end - first) << 2);
   memory.copy(atI32(m.weight, from), atI32(graph.weight, from), bytes);
@@ -202,35 +215,47 @@ function sortByClass(m: MinimumDegree): void {
   }
 }
 
-/** Lists the vertices of the next class. Those of later classes keep their degrees up to date meanwhile, unlisted. */
-function openClass(m: MinimumDegree): void {
-  const n = m.n;
-  m.leastDegree = 0;
-  let at = m.nextInClass;
-  assert(at < n, "vertices are left over when the classes are used up");
-  m.classNow = m.classes ? i32At(m.classes, i32At(m.byClass, at)) : 0;
-  for (; at < n; ++at) {
-    const v = i32At(m.byClass, at);
-    if (m.classes && i32At(m.classes, v) != m.classNow) break;
-    if (i32At(m.weight, v) > 0) enlist(m, v);
-  }
-  m.spent += <f64>(at - m.nextInClass) * 4;
-  m.nextInClass = at;
-  while (i32At(m.head, m.leastDegree) < 0 && m.leastDegree < m.unknownsLeft) ++m.leastDegree;
-}
-
-/** Lists what the last pass has touched and finds the least degree. False when no variable of this class is left. */
-function beginPass(m: MinimumDegree): bool {
-  let least = m.leastDegree;
-  for (let k = 0; k < m.pendingCount; ++k) {
+/** Lists some more of what the last pass has touched, then goes on with the least degree; with the next class if there is none. */
+function listTouched(m: MinimumDegree): void {
+  const from = m.listed, to = min(from + CHUNK, m.pendingCount);
+  for (let k = from; k < to; ++k) {
     const v = i32At(m.pending, k);
     if (i32At(m.weight, v) <= 0) continue; // eliminated or joined another since
     store<u8>(m.state + v, UNLISTED);
     if (m.classes && i32At(m.classes, v) != m.classNow) continue;
     enlist(m, v);
-    least = min(least, i32At(m.degree, v));
+    m.leastDegree = min(m.leastDegree, i32At(m.degree, v));
   }
+  m.spent += <f64>(to - from) * LIST_COST;
+  m.listed = to;
+  if (to < m.pendingCount) return;
   m.pendingCount = 0;
+  if (findLeast(m)) { m.stage = PIVOTS; return; }
+  m.stage = LIST_CLASS;
+  m.leastDegree = 0;
+  assert(m.nextInClass < m.n, "vertices are left over when the classes are used up");
+  m.classNow = m.classes ? i32At(m.classes, i32At(m.byClass, m.nextInClass)) : 0;
+}
+
+/** Lists some more vertices of the class that begins. Those of later classes keep their degrees up to date meanwhile, unlisted. */
+function listClass(m: MinimumDegree): void {
+  const from = m.nextInClass, to = min(from + CHUNK, m.n);
+  let at = from;
+  for (; at < to; ++at) {
+    const v = i32At(m.byClass, at);
+    if (m.classes && i32At(m.classes, v) != m.classNow) break;
+    if (i32At(m.weight, v) > 0) enlist(m, v);
+  }
+  m.spent += <f64>(at - from) * LIST_COST;
+  m.nextInClass = at;
+  if (at == to && to < m.n) return;
+  findLeast(m);
+  m.stage = PIVOTS;
+}
+
+/** Moves on to the least degree listed. False when none is. */
+function findLeast(m: MinimumDegree): bool {
+  let least = m.leastDegree;
   while (least <= m.unknownsLeft && i32At(m.head, least) < 0) ++least;
   m.leastDegree = min(least, m.unknownsLeft);
   return least <= m.unknownsLeft;
@@ -503,11 +528,12 @@ function compact(m: MinimumDegree): void {
   m.spent += ENTRY_COST * <f64>n;
 }
 
-/** Entries of L on the way from each unknown to the root, summed over unknowns. pathOf f64[n], by vertex, gets each one's path. Upper
- *  bounds: an element's parent is the pivot that absorbed it, from that one's first vertex on, and the true parent can lie later. */
-export function minimumDegreePaths(m: MinimumDegree, pathOf: usize): f64 {
+/** Entries of L on the way from each unknown to the root, for the unknowns of the pivots first … end − 1, those after them done; gives
+ *  their sum over unknowns. pathOf f64[n], by vertex, gets each one's path. Upper bounds: an element's parent is the pivot that absorbed
+ *  it, from that one's first vertex on, and the true parent can lie later. */
+export function minimumDegreePaths(m: MinimumDegree, pathOf: usize, first: i32, end: i32): f64 {
   let sum: f64 = 0;
-  for (let k = m.pivotCount - 1; k >= 0; --k) {
+  for (let k = end - 1; k >= first; --k) {
     const p = i32At(m.pivots, k), up = i32At(m.parent, p), own = <f64>i32At(m.elements, p);
     let count = own + <f64>i32At(m.degree, p); // of the first column
     let path = own * count - own * (own - 1) * 0.5 + (up >= 0 ? f64At(pathOf, up) : 0);

@@ -4,7 +4,7 @@
  *
  *  begin → advance(budget) until it is no longer RUNNING → finish, or release at any time. The graph must outlive the job. */
 import { allocateArray, release } from "../memory/heap";
-import { i32At, setI32 } from "../memory/access";
+import { f64At, i32At, setF64, setI32 } from "../memory/access";
 import { OK, OUT_OF_MEMORY, RUNNING } from "../memory/status";
 import { Dissection, dissectionAdvance, dissectionBegin, dissectionProgress, dissectionRelease, dissectionWork } from "./dissection";
 import { Graph } from "./graph";
@@ -29,7 +29,11 @@ const PEELING = 0;
 const FIRST = 1; // minimum degree alone
 const DISSECTING = 2;
 const SECOND = 3; // minimum degree by classes
-const DONE = 4;
+const WEIGHING = 4; // the order just found
+const DONE = 5;
+/** Vertices handled before the budget is looked at, and what weighing one costs in budget units. */
+const CHUNK = 16384;
+const WEIGH_COST: f64 = 30;
 
 @unmanaged
 export class Ordering {
@@ -51,6 +55,11 @@ export class Ordering {
   peel: Peel;
   dissection: Dissection;
   degree: MinimumDegree;
+  // Weighing goes through the pivots of the core, the core's vertices and the peeled ones.
+  corePath: usize; // f64[core.n]
+  pathOf: usize; // f64[n]
+  cursor: i32;
+  paths: f64;
 }
 
 /** Starts to order `graph`. kind: 0 automatic, 1 minimum degree, 2 nested dissection, 3 natural, 4 given (given i32[n] is copied).
@@ -89,13 +98,14 @@ export function orderingBegin(graph: Graph, kind: i32, given: usize, factorizati
 /** Works for about `budget` units (about 1 ns each). RUNNING, OK or OUT_OF_MEMORY; after the last the job can only be released. */
 export function orderingAdvance(job: Ordering, budget: f64): i32 {
   if (job.phase == DONE) return OK;
+  if (job.phase == WEIGHING) return weigh(job, budget);
   const status = job.phase == PEELING ? peelAdvance(job.peel, budget)
     : job.phase == DISSECTING ? dissectionAdvance(job.dissection, budget)
     : minimumDegreeAdvance(job.degree, budget);
   if (status != OK) return status;
   const fits = job.phase == PEELING ? (job.kind == NESTED_DISSECTION ? beginDissection(job) : beginDegree(job, FIRST))
     : job.phase == DISSECTING ? beginDegree(job, SECOND)
-    : endDegree(job);
+    : beginWeighing(job);
   if (!fits) return OUT_OF_MEMORY;
   return job.phase == DONE ? OK : RUNNING;
 }
@@ -114,10 +124,11 @@ export function orderingProgress(job: Ordering): f64 {
     const rounds: f64 = job.kind == AUTOMATIC ? 2 : 1;
     all = peeling + dissecting + rounds * degree;
     done = peeling;
-    if (job.phase >= DISSECTING) done += (rounds - 1) * degree;
+    const second = job.phase == SECOND || (job.phase == WEIGHING && changetype<usize>(job.dissection) != 0);
+    if (job.phase == DISSECTING || second) done += (rounds - 1) * degree;
     if (job.phase == DISSECTING) done += dissecting * dissectionProgress(job.dissection);
     else {
-      if (job.phase == SECOND) done += dissecting;
+      if (second) done += dissecting;
       done += degree * (1 - <f64>job.degree.verticesLeft / <f64>(job.degree.n + 1));
     }
   }
@@ -147,6 +158,8 @@ export function orderingRelease(job: Ordering): void {
   if (changetype<usize>(job.degree)) minimumDegreeRelease(job.degree);
   release(changetype<usize>(job.prediction));
   release(job.order);
+  release(job.corePath);
+  release(job.pathOf);
   release(changetype<usize>(job));
 }
 
@@ -166,37 +179,55 @@ function beginDegree(job: Ordering, phase: i32): bool {
   return true;
 }
 
-/** Takes over an order of the core if it is the first or the cheaper one, and decides what follows. */
-function endDegree(job: Ordering): bool {
-  const n = job.graph.n, peel = job.peel, degree = job.degree, core = peel.core;
-  const pathOf = allocateArray(<f64>n + <f64>core.n + 1, 3);
-  const found = changetype<Prediction>(allocateArray(<f64>offsetof<Prediction>(), 0));
+function beginWeighing(job: Ordering): bool {
+  const n = job.graph.n;
   if (!job.order) job.order = allocateArray(<f64>n + 1, 2);
-  if (!pathOf || !changetype<usize>(found) || !job.order) {
-    release(pathOf);
-    release(changetype<usize>(found));
-    return false;
+  if (!job.pathOf) job.pathOf = allocateArray(<f64>n + 1, 3);
+  if (!job.corePath) job.corePath = allocateArray(<f64>job.peel.core.n + 1, 3);
+  job.cursor = 0;
+  job.paths = 0;
+  job.phase = WEIGHING;
+  return job.order && job.pathOf && job.corePath;
+}
+
+/** Sums the paths of the order just found; then takes it over if it is the first or the cheaper one, and decides what follows. */
+function weigh(job: Ordering, budget: f64): i32 {
+  const peel = job.peel, degree = job.degree, pivots = degree.pivotCount, cores = peel.core.n, all = pivots + cores + peel.peeled;
+  for (let spent: f64 = 0; job.cursor < all; spent += CHUNK * WEIGH_COST) {
+    if (spent >= budget) return RUNNING;
+    const at = job.cursor;
+    if (at < pivots) {
+      job.cursor = min(at + CHUNK, pivots);
+      job.paths += minimumDegreePaths(degree, job.corePath, pivots - job.cursor, pivots - at);
+    } else if (at < pivots + cores) {
+      job.cursor = min(at + CHUNK, pivots + cores);
+      for (let c = at - pivots; c < job.cursor - pivots; ++c) setF64(job.pathOf, i32At(peel.coreVertex, c), f64At(job.corePath, c));
+    } else {
+      job.cursor = min(at + CHUNK, all);
+      job.paths += peelPaths(peel, job.pathOf, all - job.cursor, all - at);
+    }
   }
-  const corePath = pathOf + (<usize>n << 3);
-  let unknowns: f64 = 0, paths = minimumDegreePaths(degree, corePath);
-  for (let c = 0; c < core.n; ++c) store<f64>(pathOf + (<usize>i32At(peel.coreVertex, c) << 3), load<f64>(corePath + (<usize>c << 3)));
-  paths += peelPaths(peel, pathOf);
-  for (let v = 0; v < n; ++v) unknowns += <f64>i32At(job.graph.weight, v);
-  release(pathOf);
+  return takeOver(job) ? (job.phase == DONE ? OK : RUNNING) : OUT_OF_MEMORY;
+}
+
+function takeOver(job: Ordering): bool {
+  const n = job.graph.n, peel = job.peel, degree = job.degree, core = peel.core, kept = job.prediction;
+  const unknowns = <f64>(degree.unknowns + peel.unknowns), second = changetype<usize>(job.dissection) != 0;
+  const found = changetype<Prediction>(allocateArray(<f64>offsetof<Prediction>(), 0));
+  if (!changetype<usize>(found)) return false;
   found.nonzeros = peel.nonzeros + degree.nonzeros;
   found.flops = peel.flops + degree.flops;
-  found.path = n ? paths / unknowns : 0;
-  const work = predictedWork(found, job.factorizations, job.inverses, job.queries, n ? unknowns / <f64>n : 1);
-  const second = job.phase == SECOND;
-  if (!second || job.kind == NESTED_DISSECTION || work < job.work) {
-    release(changetype<usize>(job.prediction));
+  found.path = unknowns > 0 ? job.paths / unknowns : 0;
+  const work = predictedWork(found, job.factorizations, job.inverses, job.queries, unknowns / <f64>max(1, n - peel.hubs));
+  const better = !second || job.kind == NESTED_DISSECTION || work < job.work;
+  if (better) {
     job.prediction = found;
     job.work = work;
     if (second) job.chosen = NESTED_DISSECTION;
-    for (let k = 0; k < peel.peeled; ++k) setI32(job.order, k, i32At(peel.order, k));
+    memory.copy(job.order, peel.order, <usize>n << 2);
     for (let k = 0; k < core.n; ++k) setI32(job.order, peel.peeled + k, i32At(peel.coreVertex, i32At(degree.order, k)));
-    for (let k = n - peel.hubs; k < n; ++k) setI32(job.order, k, i32At(peel.order, k));
-  } else release(changetype<usize>(found));
+  }
+  release(changetype<usize>(better ? kept : found));
   minimumDegreeRelease(degree);
   job.degree = changetype<MinimumDegree>(0);
   const cost = dissectionWork(core);

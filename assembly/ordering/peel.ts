@@ -43,6 +43,8 @@ export class Peel {
   /** Entries of L and Σ (column count)² of the peeled columns, rows of hubs left out. */
   nonzeros: f64;
   flops: f64;
+  /** Unknowns of the peeled vertices. */
+  unknowns: i32;
   spent: f64;
 
   phase: i32;
@@ -171,6 +173,7 @@ function peelSome(p: Peel, budget: f64): void {
     if (i32At(touched, v) == pass) { setI32(p.later, p.laterCount++, v); continue; }
     store<u8>(state + v, PEELED);
     setI32(p.order, p.peeled++, v);
+    p.unknowns += i32At(weight, v);
     const degree = i32At(length, v), own = <f64>i32At(weight, v), base = i32At(start, v);
     const a = degree > 0 ? i32At(list, base) : -1, b = degree > 1 ? i32At(list, base + 1) : -1;
     setI32(p.first, v, a);
@@ -266,14 +269,12 @@ export function peelWork(graph: Graph): f64 {
   return 3 * VERTEX_COST * <f64>graph.n + 2 * ENTRY_COST * <f64>i32At(graph.start, graph.n);
 }
 
-/** Entries of L on the way from each peeled unknown to the root, summed over unknowns. pathOf f64[graph.n] holds the paths of the
- *  core's vertices and gets the others'; hubs count as the root. Of two neighbours left by a vertex, one is an ancestor of the other:
- *  the way leads over the one with the longer path. */
-export function peelPaths(p: Peel, pathOf: usize): f64 {
-  const n = p.graph.n;
-  for (let k = n - p.hubs; k < n; ++k) setF64(pathOf, i32At(p.order, k), 0);
+/** Entries of L on the way from each peeled unknown to the root, for the vertices peeled first-th … (end − 1)-th, those after them and
+ *  the core done; gives their sum over unknowns. pathOf f64[graph.n] holds paths by vertex. Of two neighbours left by a vertex, one is
+ *  an ancestor of the other: the way leads over the one with the longer path. Hubs are never among them. */
+export function peelPaths(p: Peel, pathOf: usize, first: i32, end: i32): f64 {
   let sum: f64 = 0;
-  for (let k = p.peeled - 1; k >= 0; --k) {
+  for (let k = end - 1; k >= first; --k) {
     const v = i32At(p.order, k), a = i32At(p.first, v), b = i32At(p.second, v), own = <f64>i32At(p.graph.weight, v);
     let path: f64 = 0, below: f64 = 0;
     if (a >= 0) { path = f64At(pathOf, a); below = <f64>i32At(p.graph.weight, a); }

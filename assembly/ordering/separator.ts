@@ -13,8 +13,8 @@ import { Level } from "./coarsen";
 /** A pass gives up after this many moves without a better separator, plus a share of the separator's size. */
 const PATIENCE = 60;
 /** Budget units (about 1 ns each) for a move and for an entry read. */
-const MOVE_COST: f64 = 60;
-const ENTRY_COST: f64 = 3;
+const MOVE_COST: f64 = 120;
+const ENTRY_COST: f64 = 6;
 
 @unmanaged
 export class Separator {
