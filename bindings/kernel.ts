@@ -72,6 +72,7 @@ export interface KernelExports {
   ledgerRemoved(ledger: number): number;
   ledgerBytes(ledger: number): number;
   ledgerLogDeterminant(ledger: number): number;
+  strongestRow(ledger: number, since: number): number;
   addLeaf(ledger: number, dimension: number, count: number, parents: number, numbers: number, z: number): number;
   dropLeaves(ledger: number, slots: number): void;
   setRight(ledger: number, eta: number): number;

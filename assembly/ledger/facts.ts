@@ -15,6 +15,17 @@ export function ledgerBytes(l: Ledger): f64 {
   return l.chunkBytes + 16 * (a * a + a * r + r * r) + 8 * <f64>l.numberRoom;
 }
 
+/** Largest 1 + a Σ aᵀ over added rows from `since` on, each as it came after those before it: how many times stronger a row made what
+ *  it reads. 1 when there is none. */
+export function strongestRow(l: Ledger, since: i32): f64 {
+  let most: f64 = 1;
+  for (let q = since; q < l.added; ++q) {
+    const d = f64At(l.kAdded, q * (l.addedRoom + 1));
+    if (d * d > most) most = d * d;
+  }
+  return most;
+}
+
 /** log det Λ of base, leaves and ledger together: 2 Σ log of the diagonals of L and of K.  Cost: a logarithm an unknown and a row. */
 export function ledgerLogDeterminant(l: Ledger): f64 {
   let sum: f64 = 0;

@@ -33,8 +33,10 @@ export interface Singular {
 
 /** Builds a base in steps that can be sliced; what it holds it gives back when it is dropped halfway.
  *  @param queries marginals that the base will be asked for, for the choice of its order.
+ *  @param memoryLimit bytes that its factor may take.
+ *  @throws {MemoryLimitError} before the numbers are started.
  *  @returns the base with its ledger, right-hand side set, or where the matrix is not safely positive definite. */
-export function* baseSteps(information: Information, queries: number): Steps<Base | Singular> {
+export function* baseSteps(information: Information, queries: number, memoryLimit: number): Steps<Base | Singular> {
   const k = kernel();
   const { order, blockSizes } = information;
   const loan = new Loan("A new base");
@@ -58,6 +60,7 @@ export function* baseSteps(information: Information, queries: number): Steps<Bas
     if (analysed === status.outOfMemory) throw new MemoryLimitError("The analysis of the pattern", 4 * order, bytesAvailable());
     symbolic = addressOrThrow("The analysis of the pattern", k.analysisFinish(analysis), 0);
     const bytes = k.factorBytes(symbolic);
+    if (bytes > memoryLimit) throw new MemoryLimitError("The factor", bytes, memoryLimit);
     requireMemory("The factor", bytes);
     factor = addressOrThrow("The factor", k.factorCreate(symbolic), bytes);
     k.factorBegin(factor, values);

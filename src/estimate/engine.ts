@@ -6,7 +6,7 @@ import { runSteps, type SlicedCall, type Steps } from "../../bindings/slices.js"
 import { type Base, baseSteps, isSingular, type Singular } from "./base.js";
 import { assembleInformation } from "./information.js";
 import { type Leaf, splitLeaves } from "./leaf.js";
-import { backwardCost, carryingCost, inverseCost, rebaseCost, rebasePays } from "./policy.js";
+import { backwardCost, carryingCost, inverseCost, rebaseCost, rebasePays, subtractionSpoils } from "./policy.js";
 import { type OwnedRows, System, type SystemEvent } from "./system.js";
 import { Tracked } from "./tracked.js";
 import type { WhitenedRows } from "./whitened.js";
@@ -71,6 +71,7 @@ export class Engine {
   /** Nanoseconds by which the ledger has made work dearer since the last base, and the price at which a new one was last refused. */
   #carried = 0;
   readonly #latencyBudget: number | undefined;
+  readonly #memoryLimit: number;
   #refused = 1;
   #refusal: string | undefined;
   #queries = 1000;
@@ -79,10 +80,12 @@ export class Engine {
   /** Bound from the base; see `bound`. */
   #baseBound = Number.EPSILON;
 
-  /** @param latencyBudget milliseconds of a commit beyond which a new base is built in slices; undefined: at once. */
-  constructor(dimensionOf: (state: number) => number, latencyBudget: number | undefined) {
+  /** @param latencyBudget milliseconds of a commit beyond which a new base is built in slices; undefined: at once.
+   *  @param memoryLimit bytes that the factor of a base may take. */
+  constructor(dimensionOf: (state: number) => number, latencyBudget: number | undefined, memoryLimit: number) {
     this.#dimensionOf = dimensionOf;
     this.#latencyBudget = latencyBudget;
+    this.#memoryLimit = memoryLimit;
   }
 
   get isEmpty(): boolean {
@@ -125,8 +128,15 @@ export class Engine {
     if (rowCount > MOST_ROWS) return yield* this.#rebase(world(), track, `${rowCount} rows at once`, false);
 
     const before = this.system.events.length;
+    const addedBefore = this.system.added;
     const flops = this.#intoLedger(arriving, minus, split.leaves, track, column);
-    const outcome = this.#ledgerOutcome(rowCount, flops, split.leaves.length, track);
+    let outcome = this.#ledgerOutcome(rowCount, flops, split.leaves.length, track);
+    const strength = this.system.strongest(addedBefore);
+    if (track && this.tracked.valid && subtractionSpoils(strength * this.tracked.ratio, this.#baseBound)) {
+      this.tracked.valid = false;
+      const jump = `a reading made what it reads ${strength.toExponential(1)} times stronger: kept marginals are computed afresh`;
+      outcome = { ...outcome, because: `${outcome.because}; ${jump}` };
+    }
     const reason = this.#wishForBase(measurements);
     if (this.#latencyBudget !== undefined) return this.#inBackground(outcome, reason, world, track, column, begun + this.#latencyBudget);
     return reason ? yield* this.#afterLedger(outcome, reason, world, track, column, before) : outcome;
@@ -232,7 +242,7 @@ export class Engine {
       if (!reason) return ledger;
       const all = world();
       const sizes = Int32Array.from(all.states, (state) => this.#dimensionOf(state));
-      const steps = baseSteps(this.#assemble(all, sizes), this.#queries);
+      const steps = baseSteps(this.#assemble(all, sizes), this.#queries, this.#memoryLimit);
       const first = steps.next(status.ok);
       this.#background = {
         steps,
@@ -285,7 +295,7 @@ export class Engine {
    *  @throws {SingularBatch} nothing is changed then. */
   *#rebase(world: World, track: boolean, because: string, carry: boolean, column = -1): Steps<Outcome> {
     const sizes = Int32Array.from(world.states, (state) => this.#dimensionOf(state));
-    const base = yield* baseSteps(this.#assemble(world, sizes), this.#queries);
+    const base = yield* baseSteps(this.#assemble(world, sizes), this.#queries, this.#memoryLimit);
     if (isSingular(base)) throw new SingularBatch(base);
     this.#dropBackground();
     return this.#adopt(new System(base, world.states, sizes), track, because, carry, column);
@@ -339,7 +349,8 @@ export class Engine {
     const afresh = inverseCost(costs) + (system.events.length > 0 ? rebaseCost(costs, system.slots, system.slots) : 0);
     if (this.tracked.valid && catchUp <= afresh) {
       this.tracked.refresh(system, column);
-      if (this.trackedBound <= tolerance || this.#baseBound > tolerance) return;
+      if (!subtractionSpoils(this.tracked.ratio, this.#baseBound) && (this.trackedBound <= tolerance || this.#baseBound > tolerance))
+        return;
     }
     if (system.events.length > 0) {
       const outcome = runSteps(this.#rebase(world(), false, "marginals afresh", true));

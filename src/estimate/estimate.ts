@@ -36,6 +36,8 @@ export interface EstimateOptions {
   onDoubt?: "throw" | "answer" | undefined;
   /** Milliseconds that a commit may take before a new base is built in slices, over several commits, while the old one goes on. */
   latencyBudget?: number | undefined;
+  /** Bytes that the factor may take; a commit that would need more is refused. Default: what the kernel's own limit leaves. */
+  memoryLimit?: number | undefined;
 }
 
 export interface CommitReport {
@@ -95,7 +97,7 @@ interface MeasurementRecord {
   standing: "pending" | "committed" | "withdrawn" | "absorbed";
 }
 
-const optionNames = ["track", "tolerance", "onDoubt", "latencyBudget"];
+const optionNames = ["track", "tolerance", "onDoubt", "latencyBudget", "memoryLimit"];
 
 /**
  * A least-squares estimate whose covariances stay current while states and measurements come and go.
@@ -120,6 +122,8 @@ export class Estimate {
   #inForce = 0;
   #alive = 0;
   #track: "all" | "none" = "none";
+  /** The states that `marginals()` gives when a list was tracked. */
+  #chosen: StateId[] | undefined;
   #column: StateId | "newest" | undefined;
   #busy = false;
   readonly #tolerance: number;
@@ -130,17 +134,19 @@ export class Estimate {
 
   constructor(options: EstimateOptions = {}) {
     requireKnownOptions("Estimate", options, optionNames);
-    const { track = "none", tolerance = 1e-6, onDoubt = "throw", latencyBudget } = options;
+    const { track = "none", tolerance = 1e-6, onDoubt = "throw", latencyBudget, memoryLimit = Number.POSITIVE_INFINITY } = options;
     requireWord("track", track, ["all", "none"]);
     requireWord("onDoubt", onDoubt, ["throw", "answer"]);
     if (!(tolerance > 0)) throw new OptionError(`tolerance is ${tolerance}: it must be a number greater than 0.`, { tolerance });
     if (latencyBudget !== undefined && !(latencyBudget > 0))
       throw new OptionError(`latencyBudget is ${latencyBudget}: it must be a number of milliseconds greater than 0.`, { latencyBudget });
+    if (!(memoryLimit > 0))
+      throw new OptionError(`memoryLimit is ${memoryLimit}: it must be a number of bytes greater than 0.`, { memoryLimit });
     this.#track = track;
     this.#tolerance = tolerance;
     this.#onDoubt = onDoubt;
     const states = this.#states;
-    const engine = new Engine((state) => states[state]!.dimension, latencyBudget);
+    const engine = new Engine((state) => states[state]!.dimension, latencyBudget, memoryLimit);
     this.#engine = engine;
     this.#handle = new Handle(this, "estimate", 1, () => engine.free());
   }
@@ -299,6 +305,7 @@ export class Estimate {
     this.#condensed = this.#condensed.filter((r) => !reads(r));
     if (rest) this.#condensed.push(rest);
     for (const state of states) this.#states[state]!.standing = "forgotten";
+    this.#chosen = this.#chosen?.filter((state) => !gone.has(state));
     if (typeof this.#column === "number" && gone.has(this.#column)) this.#column = undefined;
     this.#alive -= states.length;
   }
@@ -325,16 +332,19 @@ export class Estimate {
   }
 
   /** Keeps the marginals of all states current, and one block column of Σ (that of a state, or of whatever state is newest), or none.
-   *  They are brought up to date when they are read, by what has changed since; a list of states asks for these alone on demand.
+   *  They are brought up to date when they are read, by what has changed since. A list makes `marginals()` give these states alone,
+   *  each by its own path, which is exact at any time and cheaper while the list is short.
    *  @throws {UnknownStateError | OptionError | DisposedError | CommitUnderWayError} */
-  track(states: "all" | "none", options: { column?: StateId | "newest" | undefined } = {}): void {
+  track(states: readonly StateId[] | "all" | "none", options: { column?: StateId | "newest" | undefined } = {}): void {
     this.#requireIdle("track");
-    requireWord("track", states, ["all", "none"]);
+    if (typeof states === "string") requireWord("track", states, ["all", "none"]);
+    else for (const state of states) if (this.#dimensionOf(state) === undefined) throw new UnknownStateError(state, "track");
     requireKnownOptions("track", options, ["column"]);
     const { column } = options;
     if (column !== undefined && column !== "newest" && this.#dimensionOf(column) === undefined)
       throw new UnknownStateError(column, "track");
-    this.#track = states;
+    this.#track = states === "all" ? "all" : "none";
+    this.#chosen = typeof states === "string" ? undefined : [...states];
     this.#column = column;
   }
 
@@ -376,12 +386,12 @@ export class Estimate {
     return this.#marginalOf([this.#slotOf(state, "marginal")])[0]!;
   }
 
-  /** The covariances of the states asked for (all unless told), each d × d, one after another.
+  /** The covariances of the states asked for (unless told, all, or those of a tracked list), each d × d, one after another.
    *  Cost: when all are kept, what has changed since the last reading; else a path each. */
   marginals(states?: readonly StateId[]): Float64Array {
     this.#requireIdle("marginals");
     const { system } = this.#ready();
-    const wanted = states ?? this.#committedStates();
+    const wanted = states ?? this.#chosen ?? this.#committedStates();
     const slots = wanted.map((state) => this.#slotOf(state, "marginals"));
     // A new base would renumber the slots, so bring the kept numbers up to date before using any.
     if (this.#track === "all" && (!states || states.length > this.#alive / 8)) this.#refresh();

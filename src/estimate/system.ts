@@ -223,6 +223,11 @@ export class System {
     this.events.push({ kind: "drop", owned });
   }
 
+  /** How many times stronger the strongest added row from `since` on made what it reads. */
+  strongest(since: number): number {
+    return this.#k.strongestRow(this.base.ledger, since);
+  }
+
   logDeterminant(): number {
     return this.#k.ledgerLogDeterminant(this.base.ledger);
   }
