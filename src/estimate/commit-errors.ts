@@ -1,5 +1,7 @@
 // What a commit, a withdrawal or a question refuses, each with the offending value and the mend.
 import { SigmatideError } from "../errors.js";
+import type { Motion } from "./motions.js";
+import type { Undetermined } from "./undetermined.js";
 
 /** A measurement that was never added, or is out already. */
 export class UnknownMeasurementError extends SigmatideError {
@@ -44,15 +46,18 @@ export class UncertainAnswerError extends SigmatideError {
   }
 }
 
-/** The states are not all determined. Nothing was changed. */
+/** The measurements leave states free to move. Nothing was changed, and what was pending is still pending. */
 export class UndeterminedError extends SigmatideError {
-  constructor(
-    /** States that can move, by id, and their names where they have one. */
-    readonly states: readonly number[],
-    readonly names: readonly string[],
-    readonly motions: readonly object[],
-    because: string,
-  ) {
-    super("UNDETERMINED", because, { states: [...states], names: [...names], motions: [...motions] });
+  /** States that can move, by id. */
+  readonly states: readonly number[];
+  /** Their names, or "state 7". */
+  readonly names: readonly string[];
+  /** How they move, where that is plain. */
+  readonly motions: readonly Motion[];
+  constructor({ states, names, motions, remedy, because }: Undetermined) {
+    super("UNDETERMINED", because, { states: [...states], names: [...names], motions: [...motions], remedy });
+    this.states = states;
+    this.names = names;
+    this.motions = motions;
   }
 }

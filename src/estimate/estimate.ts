@@ -5,6 +5,8 @@ import { NotPositiveDefiniteError, OptionError } from "../errors.js";
 import { factorize } from "../matrix/factorize.js";
 import { SymmetricMatrix } from "../matrix/symmetric-matrix.js";
 import { requireIndex, requireKnownOptions, requireWord } from "../support/checks.js";
+import { absorb } from "./absorb.js";
+import type { Singular } from "./base.js";
 import {
   CommitUnderWayError,
   NotCommittedError,
@@ -12,17 +14,18 @@ import {
   UndeterminedError,
   UnknownMeasurementError,
 } from "./commit-errors.js";
+import { type Condensed, condense } from "./condense.js";
 import { Engine, type Outcome, SingularBatch, type World } from "./engine.js";
 import { UnknownStateError } from "./errors.js";
 import { type Evaluation, evaluate } from "./evaluate.js";
 import { assembleInformation, type Information } from "./information.js";
-import { absorbStates } from "./leaf.js";
 import { crossBlocks, eachMarginal, jointCovariance } from "./marginals.js";
 import { restoreColumns } from "./noise.js";
 import { allRedundancies } from "./redundancy.js";
 import { type CheckedMeasurement, type Linearization, type MeasurementInput, relinearize, type StateId, whiten } from "./rows.js";
 import type { Matrix } from "./small-matrix.js";
 import type { OwnedRows } from "./system.js";
+import { findUndetermined } from "./undetermined.js";
 import type { WhitenedRows } from "./whitened.js";
 
 export type MeasurementId = number;
@@ -256,7 +259,7 @@ export class Estimate {
         );
       }
     } catch (error) {
-      if (error instanceof SingularBatch) throw this.#undetermined();
+      if (error instanceof SingularBatch) throw this.#undetermined(error.where);
       throw error;
     } finally {
       this.#busy = false;
@@ -269,6 +272,19 @@ export class Estimate {
       predictedFlops: outcome?.predictedFlops ?? 0,
       countedFlops: outcome?.countedFlops ?? 0,
     };
+  }
+
+  /** Drops everything pending, as when a commit was refused: states and measurements added since the last one are gone, withdrawals,
+   *  replacements and forgets are called off. */
+  discard(): void {
+    this.#requireIdle("discard");
+    for (const state of this.#newStates) this.#states[state]!.standing = "forgotten";
+    for (const measurement of this.#added) this.#measurements[measurement]!.standing = "withdrawn";
+    this.#newStates = [];
+    this.#added = [];
+    this.#withdrawn = new Set();
+    this.#replaced = new Map();
+    this.#forgotten = new Set();
   }
 
   /** Everything pending has been applied: the books follow. Nothing here can fail. */
@@ -299,11 +315,10 @@ export class Estimate {
       record.standing = "absorbed";
       this.#inForce -= 1;
     }
-    const { rest, squares, freedom } = absorbStates(states, rows, (state) => this.#states[state]!.dimension);
-    this.#absorbedSquares += squares;
-    this.#absorbedFreedom += freedom;
-    this.#condensed = this.#condensed.filter((r) => !reads(r));
-    if (rest) this.#condensed.push(rest);
+    const left = absorb(states, rows, (state) => this.#states[state]!.dimension);
+    this.#absorbedSquares += left.squares;
+    this.#absorbedFreedom += left.redundancy;
+    this.#condensed = [...this.#condensed.filter((r) => !reads(r)), ...left.rows];
     for (const state of states) this.#states[state]!.standing = "forgotten";
     this.#chosen = this.#chosen?.filter((state) => !gone.has(state));
     if (typeof this.#column === "number" && gone.has(this.#column)) this.#column = undefined;
@@ -326,9 +341,12 @@ export class Estimate {
     return { states, rows };
   }
 
-  #undetermined(): UndeterminedError {
-    const { states } = this.#world(true);
-    return new UndeterminedError(states, [], [], "The measurements do not determine all states.");
+  /** Why what is pending cannot count: the states that it would leave free to move. */
+  #undetermined(where: Singular | undefined): UndeterminedError | NotPositiveDefiniteError {
+    const { states, rows } = this.#world(true);
+    const facts = states.map((id) => ({ id, dimension: this.#states[id]!.dimension, name: this.#states[id]!.name }));
+    const found = findUndetermined(facts, rows);
+    return found ? new UndeterminedError(found) : new NotPositiveDefiniteError(where?.unknown ?? 0, where?.pivot ?? 0);
   }
 
   /** Keeps the marginals of all states current, and one block column of Σ (that of a state, or of whatever state is newest), or none.
@@ -600,6 +618,16 @@ export class Estimate {
       ),
       place,
     };
+  }
+
+  /** The information of the whole on the states in `keep` alone, whatever the others are: K × K row-major, and its vector, in the order of
+   *  `keep`. Two parts of a network condensed to the states they share add up to the condensed whole (Helmert blocking).
+   *  @throws {UnknownStateError | NotCommittedError}  Cost: a factorization of the others and K + 1 solves. */
+  condense(keep: readonly StateId[]): Condensed {
+    this.#requireIdle("condense");
+    for (const state of keep) this.#slotOf(state, "condense");
+    const { states, rows } = this.#world(false);
+    return condense(keep, states, rows, (state) => this.#states[state]!.dimension);
   }
 
   /** log det of the information matrix. Cost: a logarithm an unknown; a factor while forgotten states are still in the base. */
