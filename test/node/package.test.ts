@@ -153,10 +153,11 @@ test("esbuild bundles it with the kernel imported as a file, and the bundle runs
   expect(runBundle(site)).toEqual([0.75, 1, 0.75]);
 });
 
-test("the README's example runs and prints what it says", () => {
-  const [, example] = /```js\n([\s\S]*?)```/.exec(readFileSync(join(installed, "README.md"), "utf8")) ?? [];
-  const printed = /\/\/ → (.*)/.exec(example!)![1]!;
-  expect(runScript("example.mjs", example!).trim()).toBe(printed);
+test("the README's examples run, one after another, and print what they say", () => {
+  const examples = [...readFileSync(join(installed, "README.md"), "utf8").matchAll(/```js\n([\s\S]*?)```/g)].map(([, code]) => code!);
+  expect(examples.length).toBeGreaterThan(1);
+  const printed = [...examples.join("").matchAll(/\/\/ → (.*)/g)].map(([, line]) => line!);
+  expect(runScript("example.mjs", examples.join("")).trim().split("\n")).toEqual(printed);
 });
 
 /** gzip bytes of what a bundler ships for a script. */
