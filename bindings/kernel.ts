@@ -71,6 +71,7 @@ export interface KernelExports {
   ledgerAdded(ledger: number): number;
   ledgerRemoved(ledger: number): number;
   ledgerBytes(ledger: number): number;
+  ledgerFlops(ledger: number): number;
   ledgerLogDeterminant(ledger: number): number;
   strongestRow(ledger: number, since: number): number;
   addLeaf(ledger: number, dimension: number, count: number, parents: number, numbers: number, z: number): number;

@@ -162,6 +162,7 @@ function visitNodes(l: Ledger, visit: (l: Ledger, x: usize, width: i32, node: i3
 function compareNode(l: Ledger, x: usize, width: i32, node: i32): void {
   const k = l.columns, chunk = chunkOf(l, node), count = load<i32>(chunk, 4);
   rankUpdateLower(k, width, x, k, l.ownGram, k, ADD);
+  l.flops += <f64>k * (2 * nodeEntries(l, node, width) + <f64>width * <f64>(k + 2 * count));
   if (!count) return;
   multiply(count, k, width, chunkNumbers(chunk), load<i32>(chunk, 8), x, k, 1, l.buffer, count, ASSIGN);
   const ids: usize = load<u32>(chunk);
@@ -278,6 +279,14 @@ export function trimColumns(l: Ledger, added: i32, removed: i32): void {
   }
 }
 
+/** Entries of L in a node: its panel, or a leaf's triangle and parents. */
+function nodeEntries(l: Ledger, node: i32, width: i32): f64 {
+  const s = l.factor.symbolic;
+  if (node < s.supernodes) return <f64>width * <f64>i32At(s.lead, node);
+  const slot = l.baseSlots + node - s.supernodes, end = slot + 1 < l.slots ? i32At(l.leafStart, slot + 1) : l.numberCount;
+  return <f64>(end - i32At(l.leafStart, slot));
+}
+
 function nodeWidth(l: Ledger, node: i32): i32 {
   const s = l.factor.symbolic;
   if (node < s.supernodes) return i32At(s.first, node + 1) - i32At(s.first, node);
@@ -304,6 +313,7 @@ function combine(l: Ledger, all: bool): void {
 function combineNode(l: Ledger, x: usize, width: i32, node: i32): void {
   const k = l.columns, chunk = chunkOf(l, node), count = load<i32>(chunk, 4), ids: usize = load<u32>(chunk);
   if (!count) return;
+  l.flops += 2 * <f64>k * <f64>width * <f64>count;
   for (let q = 0; q < count; ++q) {
     const id = i32At(ids, q);
     let from = id >= 0 ? atF64(l.fAdded, id) : atF64(l.fRemoved, ~id);
@@ -360,6 +370,7 @@ export function carryBack(l: Ledger): void {
   combine(l, true);
   backwardSolve(l.factor, l.x, l.columns, 0, 0, l.factor.symbolic.supernodes, l.buffer);
   backwardLeaves(l, true);
+  l.flops += 2 * <f64>l.columns * (l.factor.symbolic.panelEntries + <f64>l.numberCount);
   l.listFrom = -1; // everything is touched now
 }
 

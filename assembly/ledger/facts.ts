@@ -7,6 +7,8 @@ import { Ledger, slotDimension } from "./ledger";
 export function ledgerX(l: Ledger): usize { return l.x; }
 /** A Σ Aᵀ of the worked-on columns, both triangles, columns². */
 export function ledgerGram(l: Ledger): usize { return l.gram; }
+/** Flops of paths, comparisons and backward solves since the ledger began; small dense work is not counted. */
+export function ledgerFlops(l: Ledger): f64 { return l.flops; }
 export function ledgerAdded(l: Ledger): i32 { return l.added; }
 export function ledgerRemoved(l: Ledger): i32 { return l.removed; }
 /** Bytes beyond the base: columns of V, the small dense matrices, leaves. */

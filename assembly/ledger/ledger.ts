@@ -92,6 +92,8 @@ export class Ledger {
   ownGram: usize;
   schur: usize;
   gramRoom: i32;
+  /** Multiplications and additions done since the ledger began. */
+  flops: f64;
 }
 
 /** `room` f64-or-smaller elements of 2^shift bytes at a new address with the first `used` of the old block; releases the old one.

@@ -40,6 +40,8 @@ export class SingularBatch extends Error {
   }
 }
 
+/** Entries of L on the path of a row, as a share of all, before the first row has been counted: as in nets under minimum degree. */
+const FIRST_PATH_SHARE = 0.05;
 /** States that may arrive in one commit as leaves; with more, a base is cheaper than so many rotations. */
 const MOST_LEAVES = 64;
 /** Rows between old states that one commit may bring into the ledger. */
@@ -73,6 +75,8 @@ export class Engine {
   readonly #latencyBudget: number | undefined;
   readonly #memoryLimit: number;
   #refused = 1;
+  /** What a row of the last commit took: the next one's prediction. */
+  #flopsPerRow: number | undefined;
   #refusal: string | undefined;
   #queries = 1000;
   /** A new base being built while the old one answers. */
@@ -129,8 +133,12 @@ export class Engine {
 
     const before = this.system.events.length;
     const addedBefore = this.system.added;
-    const flops = this.#intoLedger(arriving, minus, split.leaves, track, column);
-    let outcome = this.#ledgerOutcome(rowCount, flops, split.leaves.length, track);
+    const predictedFlops = rowCount * (this.#flopsPerRow ?? 2 * FIRST_PATH_SHARE * this.system.base.costs.nonzeros);
+    const flopsBefore = this.system.flops;
+    this.#intoLedger(arriving, minus, split.leaves, track, column);
+    const countedFlops = this.system.flops - flopsBefore;
+    if (rowCount > 0) this.#flopsPerRow = countedFlops / rowCount;
+    let outcome = this.#ledgerOutcome(rowCount, predictedFlops, countedFlops, split.leaves.length, track);
     const strength = this.system.strongest(addedBefore);
     if (track && this.tracked.valid && subtractionSpoils(strength * this.tracked.ratio, this.#baseBound)) {
       this.tracked.valid = false;
@@ -143,7 +151,7 @@ export class Engine {
   }
 
   /** Leaves, drops and rows; on any failure the system is put back as it was. */
-  #intoLedger(plus: readonly OwnedRows[], minus: readonly OwnedRows[], leaves: readonly Leaf[], track: boolean, column: number): number {
+  #intoLedger(plus: readonly OwnedRows[], minus: readonly OwnedRows[], leaves: readonly Leaf[], track: boolean, column: number): void {
     const system = this.system;
     const before = system.events.length;
     const slots = system.slots;
@@ -154,7 +162,7 @@ export class Engine {
       const signed = minus.length > 0 || system.removed > 0;
       const keepTracked = signed && track && this.tracked.valid;
       if (keepTracked) this.tracked.refresh(system, column);
-      if (plus.length + minus.length === 0) return 0;
+      if (plus.length + minus.length === 0) return;
       const [p, m] = [plus, minus].map((list) => list.reduce((sum, { rows }) => sum + rows.rows, 0)) as [number, number];
       if (droppable) {
         if (keepTracked) {
@@ -166,7 +174,7 @@ export class Engine {
         }
         for (const owned of minus) system.drop(owned);
         if (keepTracked) this.tracked.count(system);
-        return m * system.positions;
+        return;
       }
       system.loadBatch(plus, minus);
       system.forward();
@@ -178,7 +186,6 @@ export class Engine {
       if (!system.settle(plus, minus)) throw new SingularBatch(undefined);
       if (keepTracked) this.tracked.count(system);
       else if (signed) this.tracked.valid = false;
-      return 2 * (p + m) * system.positions;
     } catch (error) {
       system.clear();
       if (system.events.length > before && system.events.slice(before).every((e) => e.kind === "leaf")) system.dropLeaves(slots);
@@ -197,12 +204,12 @@ export class Engine {
     for (const event of events) replay(system, event);
   }
 
-  #ledgerOutcome(rows: number, flops: number, leaves: number, track: boolean): Outcome {
+  #ledgerOutcome(rows: number, predictedFlops: number, countedFlops: number, leaves: number, track: boolean): Outcome {
     const { system } = this;
     const columns = rows + (track ? 3 : 0);
     this.#carried += carryingCost(Math.max(columns, 1), system.bytes / 8, system.leafNumbers, system.added + system.removed);
     const because = leaves > 0 ? "new states as leaves, rows between older ones in the ledger" : "rows in the ledger";
-    return { route: "ledger", because, predictedFlops: flops, countedFlops: flops };
+    return { route: "ledger", because, predictedFlops, countedFlops };
   }
 
   /** Why a new base is due, if it is. */

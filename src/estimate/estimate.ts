@@ -51,6 +51,7 @@ export interface CommitReport {
   /** States and measurements in force after the commit. */
   readonly states: number;
   readonly measurements: number;
+  /** Flops that the route was expected to take: of a new base its factor, of the ledger what rows have taken before; and those counted. */
   readonly predictedFlops: number;
   readonly countedFlops: number;
   /** A bound on the relative error of the marginals. */

@@ -63,6 +63,10 @@ export class System {
   get bytes(): number {
     return this.#k.ledgerBytes(this.base.ledger);
   }
+  /** Flops of the ledger's work so far. */
+  get flops(): number {
+    return this.#k.ledgerFlops(this.base.ledger);
+  }
   slotOf(state: number): number {
     return this.#slotOf[state]!;
   }
