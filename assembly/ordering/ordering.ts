@@ -8,11 +8,10 @@ import { f64At, i32At, setF64, setI32 } from "../memory/access";
 import { OK, OUT_OF_MEMORY, RUNNING } from "../memory/status";
 import { Dissection, dissectionAdvance, dissectionBegin, dissectionProgress, dissectionRelease, dissectionWork } from "./dissection";
 import { Graph } from "./graph";
-import {
-  MinimumDegree, minimumDegreeAdvance, minimumDegreeBegin, minimumDegreePaths, minimumDegreeRelease, minimumDegreeWork,
-} from "./minimum-degree";
+import { minimumDegreeAdvance, minimumDegreePaths, minimumDegreeWork } from "./minimum-degree";
 import { Peel, peelAdvance, peelBegin, peelPaths, peelProgress, peelRelease, peelWork } from "./peel";
 import { Prediction, predictedWork } from "./prediction";
+import { MinimumDegree, minimumDegreeBegin, minimumDegreeRelease } from "./quotient-graph";
 
 // Kinds of order a caller can ask for.
 export const AUTOMATIC = 0;
