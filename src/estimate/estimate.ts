@@ -6,6 +6,7 @@ import { factorize } from "../matrix/factorize.js";
 import { SymmetricMatrix } from "../matrix/symmetric-matrix.js";
 import { requireIndex, requireKnownOptions, requireWord } from "../support/checks.js";
 import { absorb } from "./absorb.js";
+import { ArrivalOrder } from "./arrival.js";
 import type { Singular } from "./base.js";
 import {
   CommitUnderWayError,
@@ -19,7 +20,7 @@ import { Engine, type Outcome, SingularBatch, type World } from "./engine.js";
 import { UnknownStateError } from "./errors.js";
 import { type Evaluation, evaluate } from "./evaluate.js";
 import { assembleInformation, type Information } from "./information.js";
-import { crossBlocks, eachMarginal, jointCovariance } from "./marginals.js";
+import { eachMarginal, jointCovariance, wholeColumn } from "./marginals.js";
 import { restoreColumns } from "./noise.js";
 import { allRedundancies } from "./redundancy.js";
 import { type CheckedMeasurement, type Linearization, type MeasurementInput, relinearize, type StateId, whiten } from "./rows.js";
@@ -118,6 +119,9 @@ export class Estimate {
   /** Weighted squares and degrees of freedom that have gone with them. */
   #absorbedSquares = 0;
   #absorbedFreedom = 0;
+  /** States in force, in order of arrival: the same array while none is forgotten. */
+  #committed: StateId[] = [];
+  readonly #arrival = new ArrivalOrder();
   #newStates: StateId[] = [];
   #added: MeasurementId[] = [];
   #withdrawn = new Set<MeasurementId>();
@@ -291,6 +295,7 @@ export class Estimate {
   /** Everything pending has been applied: the books follow. Nothing here can fail. */
   #settle(): void {
     for (const state of this.#newStates) this.#states[state]!.standing = "committed";
+    this.#committed.push(...this.#newStates);
     for (const measurement of this.#added) this.#measurements[measurement]!.standing = "committed";
     for (const measurement of this.#withdrawn) this.#measurements[measurement]!.standing = "withdrawn";
     for (const [measurement, rows] of this.#replaced) this.#measurements[measurement]!.rows = rows;
@@ -321,6 +326,7 @@ export class Estimate {
     this.#absorbedFreedom += left.redundancy;
     this.#condensed = [...this.#condensed.filter((r) => !reads(r)), ...left.rows];
     for (const state of states) this.#states[state]!.standing = "forgotten";
+    this.#committed = this.#committed.filter((state) => !gone.has(state));
     this.#chosen = this.#chosen?.filter((state) => !gone.has(state));
     if (typeof this.#column === "number" && gone.has(this.#column)) this.#column = undefined;
     this.#alive -= states.length;
@@ -382,16 +388,17 @@ export class Estimate {
       }
       return this.#partOfSolution(slot);
     }
-    const { system } = this.#ready();
-    this.#solution ??= system.estimate();
-    const parts = this.#committedStates().map((id) => this.#partOfSolution(system.slotOf(id)));
-    const all = new Float64Array(parts.reduce((sum, part) => sum + part.length, 0));
-    let at = 0;
-    for (const part of parts) {
-      all.set(part, at);
-      at += part.length;
-    }
+    this.#ready();
+    const x = this.#wholeSolution();
+    const all = new Float64Array(this.#arrange().order);
+    this.#arrival.columnInto(all, x, 1);
     return all;
+  }
+
+  /** The order of arrival, up to date. */
+  #arrange(): ArrivalOrder {
+    this.#arrival.follow(this.#engine.system, this.#committed);
+    return this.#arrival;
   }
 
   #partOfSolution(slot: number): Float64Array {
@@ -409,13 +416,27 @@ export class Estimate {
    *  Cost: when all are kept, what has changed since the last reading; else a path each. */
   marginals(states?: readonly StateId[]): Float64Array {
     this.#requireIdle("marginals");
-    const { system } = this.#ready();
-    const wanted = states ?? this.#chosen ?? this.#committedStates();
-    const slots = wanted.map((state) => this.#slotOf(state, "marginals"));
-    // A new base would renumber the slots, so bring the kept numbers up to date before using any.
-    if (this.#track === "all" && (!states || states.length > this.#alive / 8)) this.#refresh();
-    const now = this.#engine.system === system ? slots : wanted.map((state) => this.#engine.system.slotOf(state));
-    return concatenate(this.#marginalOf(now));
+    this.#ready();
+    const wanted = states ?? this.#chosen ?? this.#committed;
+    for (const state of wanted === this.#committed ? [] : wanted) this.#slotOf(state, "marginals");
+    // Before slots are looked up: a new base renumbers them.
+    if (this.#track === "all" && wanted.length > this.#alive / 8) this.#refresh();
+    const { system, tracked } = this.#engine;
+    if (wanted === this.#committed && this.#isKept(system.slots)) {
+      this.#requireSure(this.#engine.trackedBound);
+      let size = 0;
+      for (const state of wanted) size += this.#states[state]!.dimension ** 2;
+      const all = new Float64Array(size);
+      this.#arrange().blocksInto(all, tracked, tracked.viewBlocks());
+      return all;
+    }
+    return concatenate(this.#marginalOf(wanted.map((state) => system.slotOf(state))));
+  }
+
+  /** Whether the kept blocks of slots below `slots` include all rows. */
+  #isKept(slots: number): boolean {
+    const { system, tracked } = this.#engine;
+    return tracked.valid && tracked.owed(system) === 0 && slots <= tracked.slots;
   }
 
   #refresh(): void {
@@ -424,7 +445,7 @@ export class Estimate {
 
   #marginalOf(slots: readonly number[]): Float64Array[] {
     const { system, tracked } = this.#engine;
-    if (tracked.valid && tracked.owed(system) === 0 && system.removed === 0 && slots.every((slot) => slot < tracked.slots)) {
+    if (this.#isKept(slots.reduce((most, slot) => Math.max(most, slot + 1), 0))) {
       this.#requireSure(this.#engine.trackedBound);
       return slots.map((slot) => tracked.block(slot));
     }
@@ -466,25 +487,11 @@ export class Estimate {
     const { system, tracked } = this.#engine;
     const slot = system.slotOf(state);
     const d = system.dimensionAt(slot);
-    const kept = tracked.isCurrent(system, state) ? tracked.wholeColumn(system, d) : undefined;
+    const kept = tracked.isCurrent(system, state);
     this.#requireSure(kept ? this.#engine.trackedBound : this.#engine.baseBound);
-    const ids = this.#committedStates();
-    const parts = kept
-      ? []
-      : crossBlocks(
-          system,
-          slot,
-          ids.map((id) => system.slotOf(id)),
-        );
-    const order = ids.reduce((sum, id) => sum + this.#states[id]!.dimension, 0);
-    const column = new Float64Array(order * d);
-    let row = 0;
-    for (const [k, id] of ids.entries()) {
-      const at = kept ? system.positionOf(system.slotOf(id)) * d : 0;
-      const from = kept ?? parts[k]!;
-      for (let u = 0; u < this.#states[id]!.dimension; u += 1, row += 1)
-        for (let j = 0; j < d; j += 1) column[j * order + row] = from[at + u * d + j]!;
-    }
+    const arrival = this.#arrange();
+    const column = new Float64Array(arrival.order * d);
+    arrival.columnInto(column, kept ? tracked.viewColumn(system, d) : wholeColumn(system, slot), d);
     return column;
   }
 
@@ -573,7 +580,7 @@ export class Estimate {
       for (const value of this.#whiteResidual(rows)) weightedSquares += value * value;
       degreesOfFreedom += rows.rows;
     }
-    for (const id of this.#committedStates()) degreesOfFreedom -= this.#states[id]!.dimension;
+    for (const id of this.#committed) degreesOfFreedom -= this.#states[id]!.dimension;
     return { factor: degreesOfFreedom > 0 ? weightedSquares / degreesOfFreedom : Number.NaN, weightedSquares, degreesOfFreedom };
   }
 
@@ -696,7 +703,7 @@ export class Estimate {
     const { flops, nonzeros, bytes } = this.#engine.isEmpty ? { flops: 0, nonzeros: 0, bytes: 0 } : this.#engine.system.base.costs;
     return {
       states: this.#alive,
-      order: this.#committedStates().reduce((sum, id) => sum + this.#states[id]!.dimension, 0),
+      order: this.#committed.reduce((sum, id) => sum + this.#states[id]!.dimension, 0),
       measurements: this.#inForce,
       baseFlops: flops,
       baseNonzeros: nonzeros,
@@ -732,12 +739,6 @@ export class Estimate {
   #ready(): Engine {
     if (this.#engine.isEmpty) throw new NotCommittedError(0);
     return this.#engine;
-  }
-
-  #committedStates(): StateId[] {
-    const ids: StateId[] = [];
-    for (const [id, { standing }] of this.#states.entries()) if (standing === "committed") ids.push(id);
-    return ids;
   }
 
   /** The state whose column is kept, −1: none. committed: as of the last commit, else counting pending states. */

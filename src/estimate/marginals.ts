@@ -64,3 +64,15 @@ export function crossBlocks(system: System, hub: number, slots: readonly number[
   system.clear();
   return blocks;
 }
+
+/** The block column of Σ at one slot: its dimension side by side for each position. Cost: one forward and one backward solve. */
+export function wholeColumn(system: System, slot: number): Float64Array {
+  const across = system.dimensionAt(slot);
+  system.begin(across);
+  system.loadUnits(0, slot);
+  system.forward();
+  system.back();
+  const column = system.columns(across);
+  system.clear();
+  return column;
+}

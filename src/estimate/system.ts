@@ -172,6 +172,11 @@ export class System {
     return copyFloats((this.#k.ledgerX(this.base.ledger) >>> 0) + 8 * columns * this.#position[slot]!, columns * this.dimensionAt(slot));
   }
 
+  /** Σ Aᵀ at all positions, `columns` numbers for each, after `back`. */
+  columns(columns: number): Float64Array {
+    return copyFloats(this.#k.ledgerX(this.base.ledger) >>> 0, columns * this.positions);
+  }
+
   /** The estimate at all positions. Cost: one backward solve. */
   estimate(): Float64Array {
     this.#require(this.#k.solveEstimate(this.base.ledger), "The solution", 8 * this.positions);

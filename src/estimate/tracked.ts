@@ -259,6 +259,13 @@ export class Tracked {
   block(slot: number): Float64Array {
     return copyFloats(this.#blockAddress(slot), this.#blockStart[slot + 1]! - this.#blockStart[slot]!);
   }
+  /** All blocks and the column as they lie in kernel memory: good until the next kernel call. */
+  viewBlocks(): Float64Array {
+    return new Float64Array(this.#k.memory.buffer, this.#blocks.address, this.#blockStart.at(-1)!);
+  }
+  viewColumn(system: System, across: number): Float64Array {
+    return new Float64Array(this.#k.memory.buffer, this.#column.address, across * system.positions);
+  }
   /** All blocks, by slot. */
   allBlocks(): Float64Array {
     return copyFloats(this.#blocks.address, this.#blockStart.at(-1)!);
