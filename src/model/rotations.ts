@@ -96,3 +96,15 @@ export function logarithmDerivative(phi: Vector3): Matrix3 {
   const squared = multiplyMatrices(cross, cross);
   return Float64Array.from(cross, (value, k) => (k % 4 === 0 ? 1 : 0) - value / 2 + second * squared[k]!);
 }
+
+/** The right Jacobian J of SO(3) at φ: Exp(φ + ε) = Exp(φ) Exp(J ε + O(|ε|²)). Bullo, Murray (1995), the differential of the exponential. */
+export function exponentialDerivative(phi: Vector3): Matrix3 {
+  const angle = Math.hypot(...phi);
+  const squaredAngle = angle * angle;
+  // (1 − cos θ)/θ² and (θ − sin θ)/θ³; below 1e-3 the series' next terms are under 1e-15.
+  const first = angle < 1e-3 ? 1 / 2 - squaredAngle / 24 : (1 - Math.cos(angle)) / squaredAngle;
+  const second = angle < 1e-3 ? 1 / 6 - squaredAngle / 120 : (angle - Math.sin(angle)) / (squaredAngle * angle);
+  const cross = crossMatrix(phi);
+  const squared = multiplyMatrices(cross, cross);
+  return Float64Array.from(cross, (value, k) => (k % 4 === 0 ? 1 : 0) - first * value + second * squared[k]!);
+}

@@ -1,6 +1,7 @@
 import { type Quantity, wrapAngle } from "./quantities.js";
 import {
   conjugate,
+  exponentialDerivative,
   multiplyQuaternions,
   normalizeQuaternion,
   type Quaternion,
@@ -30,6 +31,11 @@ export interface StateKind {
   retract(value: Float64Array, step: ArrayLike<number>): Float64Array;
   /** The step from one value to another: `retract(from, local(from, to)) = to`; turns come out in (−π, π]. */
   local(from: Float64Array, to: Float64Array): Float64Array;
+  /**
+   * How local coordinates at `retract(x, step)` follow those at x: the derivative of `local(retract(x, step), retract(x, step + ε))` with
+   * respect to ε at 0, dimension × dimension, row-major. `undefined` stands for the identity.
+   */
+  chart(step: ArrayLike<number>): Float64Array | undefined;
 }
 
 export type StateKindName = "scalar" | "clock-offset" | "orientation" | "height" | "point-2d" | "point-3d" | "planar-pose" | "spatial-pose";
@@ -46,6 +52,7 @@ function vectorKind(name: StateKindName, quantities: readonly Quantity[]): State
     normalize: (value) => Float64Array.from(value, wrapped),
     retract: (value, step) => value.map((number, k) => wrapped(number + step[k]!, k)),
     local: (from, to) => to.map((number, k) => wrapped(number - from[k]!, k)),
+    chart: () => undefined,
   };
 }
 
@@ -72,6 +79,15 @@ const spatialPose: StateKind = {
   local(from, to) {
     const turn = vectorFromRotation(multiplyQuaternions(conjugate(attitude(from)), attitude(to)));
     return Float64Array.of(to[0]! - from[0]!, to[1]! - from[1]!, to[2]! - from[2]!, ...turn);
+  },
+  chart(step) {
+    const turning = exponentialDerivative([step[3]!, step[4]!, step[5]!]);
+    const matrix = new Float64Array(36);
+    for (let i = 0; i < 3; i++) {
+      matrix[7 * i] = 1;
+      for (let j = 0; j < 3; j++) matrix[6 * (3 + i) + 3 + j] = turning[3 * i + j]!;
+    }
+    return matrix;
   },
 };
 

@@ -64,6 +64,31 @@ describe("state kinds", () => {
       );
     });
 
+    test(`${name}: chart is the derivative of local coordinates at a stepped value by those at the value`, () => {
+      fc.assert(
+        fc.property(stateOf(name), stepOf(name), ({ value }, step) => {
+          const there = kind.retract(value, step);
+          const chart =
+            kind.chart(step) ?? Float64Array.from({ length: kind.dimension ** 2 }, (_, k) => (k % (kind.dimension + 1) === 0 ? 1 : 0));
+          const h = 1e-5;
+          for (let j = 0; j < kind.dimension; j++) {
+            const at = (sign: number) =>
+              kind.local(
+                there,
+                kind.retract(
+                  value,
+                  step.map((number, k) => number + (k === j ? sign * h : 0)),
+                ),
+              );
+            const [ahead, behind] = [at(1), at(-1)];
+            // Central differences: h² × third derivative (of the order of 1), and 600 m × ε / h.
+            for (let i = 0; i < kind.dimension; i++)
+              expect(Math.abs((ahead[i]! - behind[i]!) / (2 * h) - chart[i * kind.dimension + j]!)).toBeLessThan(2e-8);
+          }
+        }),
+      );
+    });
+
     test(`${name}: its lengths agree and normalize leaves a standard value alone`, () => {
       fc.assert(
         fc.property(stateOf(name), ({ value }) => {
