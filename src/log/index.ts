@@ -1,3 +1,4 @@
+export { applyEntry } from "./apply.js";
 export type {
   CommentEntry,
   ForgetEntry,
