@@ -40,5 +40,7 @@ export { enterRows, settleRows, withdrawEntered, dropRow } from "./ledger/rows";
 export {
   factorInnovation, scaleColumns, updateBlocks, traceRatio, updateColumn, takeColumn, leafColumn, blocksOfInverse,
 } from "./ledger/tracked";
-export { ledgerX, ledgerGram, ledgerAdded, ledgerRemoved, ledgerBytes, ledgerFlops, ledgerLogDeterminant, strongestRow } from "./ledger/facts";
+export {
+  ledgerX, ledgerGram, ledgerAdded, ledgerRemoved, ledgerBytes, ledgerFlops, ledgerLogDeterminant, strongestRow, weakestRemoval, weakestInnovation,
+} from "./ledger/facts";
 export { householderScratch, triangularize } from "./dense/householder";

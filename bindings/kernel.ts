@@ -74,6 +74,8 @@ export interface KernelExports {
   ledgerFlops(ledger: number): number;
   ledgerLogDeterminant(ledger: number): number;
   strongestRow(ledger: number, since: number): number;
+  weakestRemoval(ledger: number): number;
+  weakestInnovation(ledger: number, plus: number, minus: number): number;
   addLeaf(ledger: number, dimension: number, count: number, parents: number, numbers: number, z: number): number;
   dropLeaves(ledger: number, slots: number): void;
   setRight(ledger: number, eta: number): number;

@@ -28,6 +28,25 @@ export function strongestRow(l: Ledger, since: i32): f64 {
   return most;
 }
 
+/** Least pivot of K₂ K₂ᵀ = I − A₂ Σ₁ A₂ᵀ, a removed row's share of what held the states it read: rounding, relative to what is left, has
+ *  grown by its reciprocal. 1 when nothing is removed. */
+export function weakestRemoval(l: Ledger): f64 { return leastSquare(l.kRemoved, l.removedRoom, 0, l.removed); }
+
+/** The same of a batch that factorInnovation has factored. */
+export function weakestInnovation(l: Ledger, plus: i32, minus: i32): f64 {
+  return leastSquare(l.schur, plus + minus, plus, plus + minus);
+}
+
+/** Least square of the diagonal entries [from, to) of a column-major matrix, 1 at most. */
+function leastSquare(a: usize, ld: i32, from: i32, to: i32): f64 {
+  let least: f64 = 1;
+  for (let q = from; q < to; ++q) {
+    const d = f64At(a, q * (ld + 1));
+    least = min(least, d * d);
+  }
+  return least;
+}
+
 /** log det Λ of base, leaves and ledger together: 2 Σ log of the diagonals of L and of K.  Cost: a logarithm an unknown and a row. */
 export function ledgerLogDeterminant(l: Ledger): f64 {
   let sum: f64 = 0;

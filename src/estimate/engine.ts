@@ -9,6 +9,7 @@ import { type Leaf, splitLeaves } from "./leaf.js";
 import { backwardCost, carryingCost, inverseCost, rebaseCost, rebasePays, subtractionSpoils } from "./policy.js";
 import { type OwnedRows, System, type SystemEvent } from "./system.js";
 import { Tracked } from "./tracked.js";
+import { findUndetermined } from "./undetermined.js";
 import type { WhitenedRows } from "./whitened.js";
 
 /** What arrives and leaves in one commit. */
@@ -50,6 +51,10 @@ const MOST_ROWS = 192;
  *  with the scaled condition (Demmel 1989; Higham, "Accuracy and Stability", ch. 10). Measured on 1 000 random ill-scaled networks, the
  *  largest error was 3.1 times ε times the spread. */
 const ERROR_FACTOR = 64;
+/** Removed rows that leave less than this share of what held a state: the difference is good to 2e-16 ÷ 1e-8, or is rounding alone. */
+const WEAK_REMOVAL = 1e-8;
+/** A pivot that elimination has left this much smaller than its diagonal entry may be rounding alone: 500 ε. */
+const SUSPICIOUS_SPREAD = 1e13;
 /** Bounds below this are never a reason to keep an old base. */
 const HARMLESS = 1e-11;
 
@@ -102,12 +107,13 @@ export class Engine {
   get refusal(): string | undefined {
     return this.#refusal;
   }
-  /** A bound on the relative error of blocks computed now from the base; tracked ones: times the ratio of past to present trace. */
+  /** A bound on the relative error of blocks computed now: that of the base over the share that removed rows have left; of tracked ones:
+   *  times the ratio of past to present trace. */
   get baseBound(): number {
-    return this.#baseBound;
+    return this.#system ? this.#baseBound / this.#system.weakest() : this.#baseBound;
   }
   get trackedBound(): number {
-    return this.#baseBound * this.tracked.ratio;
+    return this.baseBound * this.tracked.ratio;
   }
 
   /** Applies a batch, or throws with everything as it was.
@@ -139,6 +145,14 @@ export class Engine {
     const countedFlops = this.system.flops - flopsBefore;
     if (rowCount > 0) this.#flopsPerRow = countedFlops / rowCount;
     let outcome = this.#ledgerOutcome(rowCount, predictedFlops, countedFlops, split.leaves.length, track);
+    if (minus.length > 0 && this.system.weakest() < WEAK_REMOVAL) {
+      this.tracked.valid = false;
+      if (this.#hasFreeStates(world())) {
+        this.#putBack(before);
+        throw new SingularBatch(undefined);
+      }
+      return yield* this.#afterLedger(outcome, "rows taken out held nearly all of what is left", world, track, column, before);
+    }
     const strength = this.system.strongest(addedBefore);
     if (track && this.tracked.valid && subtractionSpoils(strength * this.tracked.ratio, this.#baseBound)) {
       this.tracked.valid = false;
@@ -304,8 +318,21 @@ export class Engine {
     const sizes = Int32Array.from(world.states, (state) => this.#dimensionOf(state));
     const base = yield* baseSteps(this.#assemble(world, sizes), this.#queries, this.#memoryLimit);
     if (isSingular(base)) throw new SingularBatch(base);
+    if (base.pivotSpread > SUSPICIOUS_SPREAD && this.#hasFreeStates(world)) {
+      base.free();
+      throw new SingularBatch(undefined);
+    }
     this.#dropBackground();
     return this.#adopt(new System(base, world.states, sizes), track, because, carry, column);
+  }
+
+  /** Whether some state moves that the rows do not hold at all: rounding has let a pivot through that ought to be zero. */
+  #hasFreeStates({ states, rows }: World): boolean {
+    const found = findUndetermined(
+      states.map((id) => ({ id, dimension: this.#dimensionOf(id) })),
+      rows,
+    );
+    return found !== undefined && !found.isWeak;
   }
 
   /** Puts a new system in the place of the old one, unless it would be the worse of the two. */
@@ -313,9 +340,9 @@ export class Engine {
     const { base } = next;
     const bound = ERROR_FACTOR * Number.EPSILON * base.pivotSpread;
     const old = this.#system;
-    if (old && carry && bound > Math.max(HARMLESS, 2 * this.#baseBound) && old.slots > 0) {
+    if (old && carry && bound > Math.max(HARMLESS, 2 * this.baseBound) && old.slots > 0) {
       next.free();
-      this.#refuse(`a new base would be good to ${bound.toExponential(1)} only, the present one to ${this.#baseBound.toExponential(1)}`);
+      this.#refuse(`a new base would be good to ${bound.toExponential(1)} only, the present one to ${this.baseBound.toExponential(1)}`);
       return { route: "ledger", because: `rows in the ledger; ${this.#refusal}`, predictedFlops: 0, countedFlops: 0 };
     }
     if (old) {

@@ -440,7 +440,9 @@ export class Estimate {
   }
 
   #refresh(): void {
+    const { system } = this.#engine;
     this.#engine.refresh(() => this.#world(false), this.#trackedColumn(true), this.#tolerance);
+    if (this.#engine.system !== system) this.#solution = undefined; // it was in the old base's positions
   }
 
   #marginalOf(slots: readonly number[]): Float64Array[] {

@@ -237,6 +237,11 @@ export class System {
     return this.#k.strongestRow(this.base.ledger, since);
   }
 
+  /** The least share of what held some state that removed rows have left, 1 when none was removed. */
+  weakest(): number {
+    return this.#k.weakestRemoval(this.base.ledger);
+  }
+
   logDeterminant(): number {
     return this.#k.ledgerLogDeterminant(this.base.ledger);
   }

@@ -30,6 +30,9 @@ class Room {
   }
 }
 
+/** Kept numbers lose as many digits as the share of what held a state that a removal leaves is small: six here, which leaves ten. */
+const WEAK_REMOVAL = 1e-6;
+
 export class Tracked {
   readonly #k = kernel();
   /** Blocks by slot, d × d each; the column, its dimension side by side for each position; its successor; largest past traces by slot. */
@@ -160,12 +163,17 @@ export class Tracked {
     if (plus + minus > 0) k.updateColumn(ledger, plus, minus, target, this.#column.address);
   }
 
-  /** A batch with removed rows, at once: the numbers must be current. Between `forward` and `settle`. False: a removed row fails. */
+  /** A batch with removed rows, at once: the numbers must be current. Between `forward` and `settle`. False: a removed row fails. When
+   *  the removed rows held nearly all, the numbers are given up for fresh ones. */
   applySigned(system: System, plus: number, minus: number, enter: () => void): boolean {
     const k = this.#k;
     const { ledger } = system.base;
     if (k.factorInnovation(ledger, plus, minus) !== status.ok) return false;
     enter();
+    if (k.weakestInnovation(ledger, plus, minus) < WEAK_REMOVAL) {
+      this.valid = false;
+      return true;
+    }
     k.scaleColumns(ledger, plus + minus);
     system.back();
     this.#apply(system, plus, minus, 0, false, this.#columnState < 0 ? -1 : system.slotOf(this.#columnState));

@@ -16,6 +16,8 @@ export interface Undetermined {
   /** As the states were named, or "state 7". */
   readonly names: readonly string[];
   readonly motions: readonly Motion[];
+  /** Measurements do hold all of these states, but too weakly for an information matrix in f64. */
+  readonly isWeak: boolean;
   /** What would hold them. */
   readonly remedy: string;
   /** All of it in sentences: who can move, how, why, and the remedy. */
@@ -43,19 +45,20 @@ const NAMES_TOLD = 5;
 export function findUndetermined(states: readonly StateFacts[], rows: readonly RowsWithNoise[]): Undetermined | undefined {
   const facts = new Map(states.map((state) => [state.id, state]));
   const dimensionOf = (state: number): number => facts.get(state)!.dimension;
-  const found = { motions: [] as Motion[], isWeak: false, isPartial: false };
+  const found = { motions: [] as Motion[], isWeak: true, isPartial: false };
   for (const part of partsOf(
     states.map(({ id }) => id),
     rows,
   )) {
     if (part.rows.length === 0) {
+      found.isWeak = false;
       const because = "no measurement reads it";
       found.motions.push({ kind: "free", states: part.states, count: dimensionOf(part.states[0]!), because });
       continue;
     }
     const space = nullSpace(part.states, dimensionOf, part.rows);
     if (space.dimension === 0) continue;
-    found.isWeak ||= space.isWeak;
+    found.isWeak &&= space.isWeak;
     found.isPartial ||= space.isPartial;
     for (const { cluster, basis, scale } of clustersOf(part, space, dimensionOf))
       found.motions.push(...motionsOf(cluster, basis, space.dimension, scale));
@@ -69,6 +72,7 @@ export function findUndetermined(states: readonly StateFacts[], rows: readonly R
     states: ids,
     names: ids.map(nameOf),
     motions: found.motions,
+    isWeak: found.isWeak,
     remedy,
     because: inSentences(ids, found, nameOf, remedy),
   };
