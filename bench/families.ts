@@ -4,7 +4,7 @@ import { grid } from "./families/grid.js";
 import { helix } from "./families/helix.js";
 import { landmarks } from "./families/landmarks.js";
 import { net } from "./families/net.js";
-import { patrol } from "./families/patrol.js";
+import { type PatrolOptions, patrol } from "./families/patrol.js";
 import type { Stream } from "./families/stream.js";
 
 export interface Family {
@@ -67,6 +67,6 @@ export const families = {
 
 export type FamilyName = keyof typeof families;
 
-function heavyYard(states: number, seed: number): { seed: number; side: number; revisits: number } {
-  return { seed, side: Math.max(2, Math.round(Math.sqrt(states) / 4)), revisits: 0.28 };
+function heavyYard(states: number, seed: number): PatrolOptions {
+  return { seed, side: Math.max(2, Math.round(Math.sqrt(states) / 4)), revisits: 0.28, straightOn: 0.85 };
 }

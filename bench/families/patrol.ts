@@ -9,14 +9,19 @@ export interface PatrolOptions {
   readonly side: number;
   /** Share of steps that tie the new pose to an earlier one at the same crossing. */
   readonly revisits: number;
+  /** Share of crossings, of those that allow it, passed straight on before chance picks a way; 2/3 unless told. */
+  readonly straightOn?: number;
   /** Unknowns of a pose: 3 in the plane, 6 in space. */
   readonly dimension?: 3 | 6;
   /** The first pose's prior: a multiple of its standard deviations of 10 mm and 2 mrad. */
   readonly priorScale?: number;
 }
 
-/** The route: at each crossing straight on two times in three, else a turn, never back; the border turns it inward. */
-export function route(steps: number, side: number, seed: number): PlanarPose[] {
+/** How often a route that can go straight on does. */
+const USUALLY = 2 / 3;
+
+/** The route: at each crossing straight on so often, else either way or straight at random, never back; the border turns it inward. */
+export function route(steps: number, side: number, seed: number, straightOn: number = USUALLY): PlanarPose[] {
   const r = random(seed);
   const lane = 5;
   let [x, y, direction] = [side >> 1, side >> 1, 0];
@@ -29,7 +34,7 @@ export function route(steps: number, side: number, seed: number): PlanarPose[] {
         const [nx, ny] = ahead(x, y, d);
         return nx >= 0 && ny >= 0 && nx < side && ny < side;
       });
-    const straight = open.includes(direction) && r.uniform() < 2 / 3;
+    const straight = open.includes(direction) && r.uniform() < straightOn;
     direction = straight ? direction : open[r.below(open.length)]!;
     [x, y] = ahead(x, y, direction);
   }
@@ -55,10 +60,13 @@ const inSpace = ({ x, y, heading }: PlanarPose): SpatialPose => {
 export const planarOdometry: readonly number[] = planar(odometry);
 export const planarStart: readonly number[] = planar(start);
 
-export function patrol(poses: number, { seed = 1, side, revisits, dimension = 3, priorScale = 1 }: PatrolOptions): Stream {
+export function patrol(
+  poses: number,
+  { seed = 1, side, revisits, straightOn = USUALLY, dimension = 3, priorScale = 1 }: PatrolOptions,
+): Stream {
   const r = random(seed);
   const stream = new Stream(random(seed + 1));
-  const places = route(poses, side, seed + 2);
+  const places = route(poses, side, seed + 2, straightOn);
   const deviations = dimension === 3 ? planar : spatial;
   const relative = (a: PlanarPose, b: PlanarPose): [number[], number[]] =>
     dimension === 3 ? relativePlanarPose(a, b) : relativeSpatialPose(inSpace(a), inSpace(b));
