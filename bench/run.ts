@@ -1,4 +1,4 @@
-// npm run bench -- [--section NAME,…] [--family NAME,…] [--quick] [--json FILE]
+// npm run bench -- [SECTION…] [--section NAME,…] [--family NAME,…] [--quick] [--large] [--json FILE]
 import { mkdirSync, writeFileSync } from "node:fs";
 import { dirname } from "node:path";
 import { parseArgs } from "node:util";
@@ -8,15 +8,18 @@ import { machine } from "./harness/machine.js";
 import { line, type Row } from "./harness/report.js";
 import { dense } from "./sections/dense.js";
 import { factor } from "./sections/factor.js";
+import { incremental } from "./sections/incremental.js";
 import { inverse } from "./sections/inverse.js";
 
-const sections = [dense, factor, inverse];
+const sections = [dense, factor, inverse, incremental];
 
-const { values } = parseArgs({
+const { values, positionals } = parseArgs({
+  allowPositionals: true,
   options: {
     section: { type: "string", multiple: true, default: [] },
     family: { type: "string", multiple: true, default: [] },
     quick: { type: "boolean", default: false },
+    large: { type: "boolean", default: false },
     json: { type: "string", default: "build/bench.json" },
   },
 });
@@ -30,8 +33,13 @@ const listed = (given: readonly string[], known: readonly string[], what: string
   return names;
 };
 const names = sections.map(({ name }) => name);
-const asked = listed(values.section, names, "section");
-const options = { quick: values.quick, families: listed(values.family, Object.keys(families), "family"), time: values.quick ? 150 : 700 };
+const asked = listed([...values.section, ...positionals], names, "section");
+const options = {
+  quick: values.quick,
+  large: values.large,
+  families: listed(values.family, Object.keys(families), "family"),
+  time: values.quick ? 150 : 700,
+};
 
 await init();
 const facts = machine();

@@ -1,4 +1,5 @@
 // What a section hands back, and how it is shown.
+import { type Target, targetCell } from "./targets.js";
 import type { Timing } from "./timing.js";
 
 /** One measured line: ours, and what it is compared with in the same run. */
@@ -8,10 +9,12 @@ export interface Row {
   /** States, or the size of the piece. */
   readonly size: number;
   readonly measure: string;
-  readonly ours: Timing;
+  /** Left out where the figures or targets are the result. */
+  readonly ours?: Timing;
   readonly others?: Readonly<Record<string, Timing>>;
   /** Figures beside the time, such as GFlop/s. */
   readonly figures?: Readonly<Record<string, number>>;
+  readonly targets?: readonly Target[];
 }
 
 export interface Section {
@@ -24,6 +27,8 @@ export interface Section {
 export interface RunOptions {
   /** Small sizes only, and short samples. */
   readonly quick: boolean;
+  /** The largest sizes too, where they take minutes. */
+  readonly large: boolean;
   /** Families asked for; all of the section's when empty. */
   readonly families: readonly string[];
   /** Milliseconds of samples for each line. */
@@ -39,17 +44,17 @@ const spread = ({ low, high, median }: Timing): string => `±${(((high - low) / 
 const figure = (value: number): string => (Math.abs(value) >= 100 ? value.toFixed(0) : value.toPrecision(3));
 
 /** A line for people: the median with half the distance of the quartiles; each other's median and how many times ours it is. */
-export function line({ subject, size, measure, ours, others = {}, figures = {} }: Row): string {
+export function line({ subject, size, measure, ours, others = {}, figures = {}, targets = [] }: Row): string {
   const cells = [
     subject.padEnd(16),
     String(size).padStart(7),
     measure.padEnd(16),
-    duration(ours.median).padStart(8),
-    spread(ours).padStart(6),
+    ...(ours ? [duration(ours.median).padStart(8), spread(ours).padStart(6)] : []),
     ...Object.entries(others).map(
-      ([name, timing]) => `${name} ${duration(timing.median)} = ${(timing.median / ours.median).toPrecision(3)} ×`,
+      ([name, timing]) => `${name} ${duration(timing.median)}${ours ? ` = ${(timing.median / ours.median).toPrecision(3)} ×` : ""}`,
     ),
     ...Object.entries(figures).map(([name, value]) => `${name} ${figure(value)}`),
+    ...targets.map(targetCell),
   ];
   return cells.join("  ");
 }
