@@ -32,7 +32,7 @@ export class Own {
 
   /** Takes the order that an estimate's base would have. */
   constructor(information: Information) {
-    const base = runSteps(baseSteps(information, QUERIES));
+    const base = runSteps(baseSteps(information, QUERIES, Number.POSITIVE_INFINITY));
     if (isSingular(base)) throw new Error(`the matrix of the step is singular at unknown ${base.unknown}`);
     const { blockSizes, values, vector } = information;
     this.#base = base;
