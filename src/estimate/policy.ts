@@ -2,7 +2,7 @@
 
 /** What one unit of each kind of work takes. Measured on the heavy patrol and the monitoring net of 10 000 states; the routes change
  *  little when one of them is off by half, since the cost of carrying on is flat around its best point. */
-export const nanoseconds = {
+const nanoseconds = {
   /** One multiplication and addition of the dense kernels in a factorization, small fronts included. */
   factorFlop: 0.1,
   /** One entry of L: reading, writing and clearing it. */

@@ -24,7 +24,7 @@ export async function kernelBytes(build: "plain" | "fused" | "debug" = kernelBui
   return bytes.buffer.slice(bytes.byteOffset, bytes.byteOffset + bytes.byteLength) as ArrayBuffer;
 }
 
-export type Raw = Record<string, (...args: number[]) => number>;
+type Raw = Record<string, (...args: number[]) => number>;
 export interface RawKernel {
   raw: Raw;
   memory: WebAssembly.Memory;

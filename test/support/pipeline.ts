@@ -10,10 +10,10 @@ export interface LowerColumns {
   values: Float64Array;
 }
 
-export const RUNNING = -1;
+const RUNNING = -1;
 
 /** Runs an advance call to its end in slices of `budget` units and checks that progress never falls. */
-export function runSlices(advance: (budget: number) => number, progress: () => number, budget: number): number {
+function runSlices(advance: (budget: number) => number, progress: () => number, budget: number): number {
   let last = 0;
   for (;;) {
     const status = advance(budget);
