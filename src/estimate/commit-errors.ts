@@ -61,3 +61,24 @@ export class UndeterminedError extends SigmatideError {
     this.motions = motions;
   }
 }
+
+const snapshotFaults = {
+  foreign: ["These bytes are not a snapshot", "Give restore() the bytes that snapshot() returned"],
+  "cut short": ["The snapshot is cut short", "Read all of it again, or use an earlier one"],
+  damaged: ["The snapshot is damaged", "Read it again, or use an earlier one"],
+  "another version": ["The snapshot is of another format version", "Restore it with the release that wrote it"],
+  "another build": ["The snapshot is of another kernel build", "Restore it with the build that wrote it"],
+} as const;
+
+/** Bytes that no estimate can be restored from. */
+export class SnapshotError extends SigmatideError {
+  constructor(
+    readonly problem: keyof typeof snapshotFaults,
+    /** Where in the bytes it shows; undefined: in no one place. */
+    readonly byte: number | undefined,
+    because: string,
+  ) {
+    const [what, mend] = snapshotFaults[problem];
+    super("SNAPSHOT", `${what}: ${byte === undefined ? "" : `at byte ${byte}, `}${because}. ${mend}.`, { problem, byte, because });
+  }
+}

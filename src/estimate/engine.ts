@@ -7,10 +7,9 @@ import { type Base, baseSteps, isSingular, type Singular } from "./base.js";
 import { assembleInformation } from "./information.js";
 import { type Leaf, splitLeaves } from "./leaf.js";
 import { backwardCost, carryingCost, inverseCost, rebaseCost, rebasePays, subtractionSpoils } from "./policy.js";
-import { type OwnedRows, System, type SystemEvent } from "./system.js";
-import { Tracked } from "./tracked.js";
+import { type OwnedRows, System, type SystemEvent, type World } from "./system.js";
+import { type SavedTracked, Tracked } from "./tracked.js";
 import { findUndetermined } from "./undetermined.js";
-import type { WhitenedRows } from "./whitened.js";
 
 /** What arrives and leaves in one commit. */
 export interface Batch {
@@ -19,10 +18,15 @@ export interface Batch {
   readonly minus: readonly OwnedRows[];
 }
 
-/** All that is in force after the commit: what a new base is built from. */
-export interface World {
-  readonly states: readonly number[];
-  readonly rows: readonly WhitenedRows[];
+/** All that an engine needs to go on with the same bits. A base that is being built is left out: it is begun again when it is due. */
+export interface SavedEngine {
+  readonly world: World;
+  readonly events: readonly SystemEvent[];
+  readonly carried: number;
+  readonly refused: number;
+  readonly refusal: string | undefined;
+  readonly flopsPerRow: number | undefined;
+  readonly tracked: SavedTracked;
 }
 
 export interface Outcome {
@@ -287,7 +291,7 @@ export class Engine {
           this.#refuse("a new base would not be definite in f64, while leaves and ledger still are");
           return ledger;
         }
-        job.next = new System(step.value, job.world.states, job.sizes);
+        job.next = new System(step.value, job.world, job.sizes);
       } else if (job.replayed < system.events.length) {
         replay(job.next!, system.events[job.replayed]!);
         job.replayed += 1;
@@ -323,7 +327,7 @@ export class Engine {
       throw new SingularBatch(undefined);
     }
     this.#dropBackground();
-    return this.#adopt(new System(base, world.states, sizes), track, because, carry, column);
+    return this.#adopt(new System(base, world, sizes), track, because, carry, column);
   }
 
   /** Whether some state moves that the rows do not hold at all: rounding has let a pivot through that ought to be zero. */
@@ -338,7 +342,7 @@ export class Engine {
   /** Puts a new system in the place of the old one, unless it would be the worse of the two. */
   #adopt(next: System, track: boolean, because: string, carry: boolean, column: number): Outcome {
     const { base } = next;
-    const bound = ERROR_FACTOR * Number.EPSILON * base.pivotSpread;
+    const bound = boundOf(base);
     const old = this.#system;
     if (old && carry && bound > Math.max(HARMLESS, 2 * this.baseBound) && old.slots > 0) {
       next.free();
@@ -399,6 +403,38 @@ export class Engine {
     this.tracked.refresh(this.system, column);
   }
 
+  /** What `restore` needs, without copies of rows; undefined before the first commit. */
+  save(): SavedEngine | undefined {
+    const system = this.#system;
+    if (!system) return undefined;
+    return {
+      world: system.world,
+      events: system.events,
+      carried: this.#carried,
+      refused: this.#refused,
+      refusal: this.#refusal,
+      flopsPerRow: this.#flopsPerRow,
+      tracked: this.tracked.save(system),
+    };
+  }
+
+  /** Brings an empty engine to where another one was saved: its base is factored again, and what happened since is replayed in order.
+   *  @throws {SingularBatch} the numbers of this kernel build do not bear it. After any failure: `free`. */
+  restore({ world, events, carried, refused, refusal, flopsPerRow, tracked }: SavedEngine): void {
+    const sizes = Int32Array.from(world.states, (state) => this.#dimensionOf(state));
+    const base = runSteps(baseSteps(this.#assemble(world, sizes), this.#queries, this.#memoryLimit));
+    if (isSingular(base)) throw new SingularBatch(base);
+    const system = new System(base, world, sizes);
+    this.#system = system;
+    for (const event of events) replay(system, event);
+    this.tracked.restore(system, tracked);
+    this.#baseBound = boundOf(base);
+    this.#carried = carried;
+    this.#refused = refused;
+    this.#refusal = refusal;
+    this.#flopsPerRow = flopsPerRow;
+  }
+
   free(): void {
     this.#dropBackground();
     this.tracked.free();
@@ -406,6 +442,9 @@ export class Engine {
     this.#system = undefined;
   }
 }
+
+/** A bound on the relative error of blocks from a fresh base. */
+const boundOf = (base: Base): number => ERROR_FACTOR * Number.EPSILON * base.pivotSpread;
 
 /** Does to a system what an event did to another one. A drop of rows that its base holds becomes their removal. */
 function replay(system: System, event: SystemEvent): void {

@@ -11,21 +11,24 @@ import type { Singular } from "./base.js";
 import {
   CommitUnderWayError,
   NotCommittedError,
+  SnapshotError,
   UncertainAnswerError,
   UndeterminedError,
   UnknownMeasurementError,
 } from "./commit-errors.js";
 import { type Condensed, condense } from "./condense.js";
-import { Engine, type Outcome, SingularBatch, type World } from "./engine.js";
+import { Engine, type Outcome, SingularBatch } from "./engine.js";
 import { UnknownStateError } from "./errors.js";
 import { type Evaluation, evaluate } from "./evaluate.js";
 import { assembleInformation, type Information } from "./information.js";
 import { eachMarginal, jointCovariance, wholeColumn } from "./marginals.js";
 import { restoreColumns } from "./noise.js";
+import type { MeasurementRecord, StateRecord } from "./records.js";
 import { allRedundancies } from "./redundancy.js";
 import { type CheckedMeasurement, type Linearization, type MeasurementInput, relinearize, type StateId, whiten } from "./rows.js";
 import type { Matrix } from "./small-matrix.js";
-import type { OwnedRows } from "./system.js";
+import { decodeSnapshot, type EstimateContents, encodeSnapshot } from "./snapshot.js";
+import type { OwnedRows, World } from "./system.js";
 import { findUndetermined } from "./undetermined.js";
 import type { WhitenedRows } from "./whitened.js";
 
@@ -90,18 +93,6 @@ export interface EstimateStatistics {
   readonly ledgerBytes: number;
 }
 
-interface StateRecord {
-  readonly dimension: number;
-  readonly name: string | undefined;
-  /** Pending: added since the last commit. Forgotten ones stay in the base until the next one. */
-  standing: "pending" | "committed" | "forgotten";
-}
-
-interface MeasurementRecord {
-  rows: CheckedMeasurement;
-  standing: "pending" | "committed" | "withdrawn" | "absorbed";
-}
-
 const optionNames = ["track", "tolerance", "onDoubt", "latencyBudget", "memoryLimit"];
 
 /**
@@ -136,6 +127,8 @@ export class Estimate {
   #busy = false;
   readonly #tolerance: number;
   readonly #onDoubt: "throw" | "answer";
+  readonly #latencyBudget: number | undefined;
+  readonly #memoryLimit: number;
   readonly #engine: Engine;
   readonly #handle: Handle;
   #solution: Float64Array | undefined;
@@ -153,6 +146,8 @@ export class Estimate {
     this.#track = track;
     this.#tolerance = tolerance;
     this.#onDoubt = onDoubt;
+    this.#latencyBudget = latencyBudget;
+    this.#memoryLimit = memoryLimit;
     const states = this.#states;
     const engine = new Engine((state) => states[state]!.dimension, latencyBudget, memoryLimit);
     this.#engine = engine;
@@ -712,6 +707,89 @@ export class Estimate {
       baseBytes: bytes,
       ledgerBytes: this.#engine.isEmpty ? 0 : this.#engine.system.bytes,
     };
+  }
+
+  /**
+   * All of the estimate as bytes, what is pending included; `restore` makes one of them that goes on from here. Rows that are shared are
+   * stored once. A base that is being built within a latency budget is left out: the restored estimate begins it again when it is due.
+   * @returns a copy, in the format of a version, little-endian, with a CRC-32 at its end: safe to keep after `dispose()`.
+   * @throws {DisposedError | CommitUnderWayError}
+   * Cost: a few passes over the rows of all measurements ever added, and over the kept marginals.
+   */
+  snapshot(): Uint8Array {
+    this.#requireIdle("snapshot");
+    return encodeSnapshot({
+      options: {
+        track: this.#track,
+        tolerance: this.#tolerance,
+        onDoubt: this.#onDoubt,
+        latencyBudget: this.#latencyBudget,
+        memoryLimit: this.#memoryLimit,
+      },
+      chosen: this.#chosen,
+      column: this.#column,
+      states: this.#states,
+      measurements: this.#measurements,
+      condensed: this.#condensed,
+      absorbedSquares: this.#absorbedSquares,
+      absorbedFreedom: this.#absorbedFreedom,
+      newStates: this.#newStates,
+      added: this.#added,
+      withdrawn: [...this.#withdrawn],
+      replaced: [...this.#replaced],
+      forgotten: [...this.#forgotten],
+      inForce: this.#inForce,
+      alive: this.#alive,
+      solution: this.#solution,
+      engine: this.#engine.save(),
+    });
+  }
+
+  /**
+   * An estimate as it was when `snapshot` was called: on the same kernel build it answers with the same bits and goes on with the same
+   * bits. Only when a new base comes may differ: by the clock under a `latencyBudget`, and after a refused commit, whose room in the ledger
+   * is not taken again. Ids stay as they were.
+   * @param options in place of those saved; what is left out or undefined is as it was.
+   * @throws {SnapshotError} bytes that are not a snapshot, cut short, damaged, or of another format version; the checksum finds accidents,
+   *   not forgeries. @throws {OptionError | MemoryLimitError} Nothing is held after any of them.
+   * Cost: the last base's factor, what the ledger has taken in since, and a few passes over the bytes.
+   */
+  static restore(bytes: Uint8Array, options: EstimateOptions = {}): Estimate {
+    requireKnownOptions("restore", options, optionNames);
+    const contents = decodeSnapshot(bytes);
+    const given: EstimateOptions = Object.fromEntries(Object.entries(options).filter(([, value]) => value !== undefined));
+    const estimate = new Estimate({ ...contents.options, ...given });
+    try {
+      estimate.#take(given.track === undefined ? contents : { ...contents, chosen: undefined });
+    } catch (error) {
+      estimate.dispose();
+      if (error instanceof SingularBatch)
+        throw new SnapshotError("another build", undefined, "its numbers are no longer positive definite as this kernel build rounds them");
+      throw error;
+    }
+    return estimate;
+  }
+
+  #take(contents: EstimateContents): void {
+    for (const state of contents.states) {
+      if (state.standing === "committed") this.#committed.push(this.#states.length);
+      this.#states.push(state);
+    }
+    for (const measurement of contents.measurements) this.#measurements.push(measurement);
+    this.#chosen = contents.chosen && [...contents.chosen];
+    this.#column = contents.column;
+    this.#condensed = [...contents.condensed];
+    this.#absorbedSquares = contents.absorbedSquares;
+    this.#absorbedFreedom = contents.absorbedFreedom;
+    this.#newStates = [...contents.newStates];
+    this.#added = [...contents.added];
+    this.#withdrawn = new Set(contents.withdrawn);
+    this.#replaced = new Map(contents.replaced);
+    this.#forgotten = new Set(contents.forgotten);
+    this.#inForce = contents.inForce;
+    this.#alive = contents.alive;
+    this.#solution = contents.solution;
+    if (contents.engine) this.#engine.restore(contents.engine);
   }
 
   dispose(): void {

@@ -7,6 +7,12 @@ import type { Base } from "./base.js";
 import type { Leaf } from "./leaf.js";
 import type { WhitenedRows } from "./whitened.js";
 
+/** All that is in force after a commit: what a base is built from. */
+export interface World {
+  readonly states: readonly number[];
+  readonly rows: readonly WhitenedRows[];
+}
+
 /** What has happened to a base since it was built, in order; replayed on the next base, and kept in snapshots. */
 export type SystemEvent =
   | { readonly kind: "leaf"; readonly leaf: Leaf }
@@ -24,6 +30,8 @@ const countRows = (list: readonly OwnedRows[]): number => list.reduce((sum, { ro
 export class System {
   readonly #k = kernel();
   readonly base: Base;
+  /** What the base was built from. */
+  readonly world: World;
   /** Slot of each state, by state id. */
   readonly #slotOf: number[] = [];
   readonly #stateOf: number[] = [];
@@ -36,10 +44,11 @@ export class System {
   #scratchBytes = 0;
   leafNumbers = 0;
 
-  /** @param states ids by their number in the base's information matrix. */
-  constructor(base: Base, states: readonly number[], sizes: Int32Array) {
+  /** @param world its states as they are numbered in the base's information matrix. @param sizes their dimensions. */
+  constructor(base: Base, world: World, sizes: Int32Array) {
     this.base = base;
-    for (const place of base.stateOfSlot) this.#push(states[place]!, sizes[place]!);
+    this.world = world;
+    for (const place of base.stateOfSlot) this.#push(world.states[place]!, sizes[place]!);
   }
 
   #push(state: number, dimension: number): void {

@@ -33,6 +33,22 @@ class Room {
 /** Kept numbers lose as many digits as the share of what held a state that a removal leaves is small: six here, which leaves ten. */
 const WEAK_REMOVAL = 1e-6;
 
+/** Kept numbers as they were saved. */
+export interface SavedTracked {
+  readonly ratio: number;
+  /** Undefined when they have to be computed afresh. */
+  readonly numbers:
+    | {
+        readonly slots: number;
+        readonly rows: number;
+        readonly columnState: number;
+        readonly blocks: Float64Array;
+        readonly largest: Float64Array;
+        readonly column: Float64Array;
+      }
+    | undefined;
+}
+
 export class Tracked {
   readonly #k = kernel();
   /** Blocks by slot, d × d each; the column, its dimension side by side for each position; its successor; largest past traces by slot. */
@@ -98,13 +114,13 @@ export class Tracked {
     this.ratio = this.#k.traceRatio(system.base.ledger, this.#blocks.address, this.#largest.address);
   }
 
-  #reserveBlocks(system: System): void {
+  #reserveBlocks(system: System, slots = system.slots): void {
     const used = 8 * this.#blockStart.at(-1)!;
     const before = this.slots;
-    for (let slot = before; slot < system.slots; slot += 1) this.#blockStart.push(this.#blockStart.at(-1)! + system.dimensionAt(slot) ** 2);
+    for (let slot = before; slot < slots; slot += 1) this.#blockStart.push(this.#blockStart.at(-1)! + system.dimensionAt(slot) ** 2);
     this.#blocks.reserve(8 * this.#blockStart.at(-1)!, used);
-    this.#largest.reserve(8 * system.slots, 8 * before);
-    new Float64Array(this.#k.memory.buffer, this.#largest.address + 8 * before, system.slots - before).fill(0);
+    this.#largest.reserve(8 * slots, 8 * before);
+    new Float64Array(this.#k.memory.buffer, this.#largest.address + 8 * before, slots - before).fill(0);
   }
 
   /** Brings blocks and the column of `column` (−1: none) up to date. Requires that nothing is removed in the ledger beyond what the
@@ -323,28 +339,37 @@ export class Tracked {
     this.#rows = to.added;
   }
 
-  /** All numbers, to be brought back by `restore`. */
-  save(system: System): { blocks: Float64Array; largest: Float64Array; column: Float64Array; columnState: number; ratio: number } {
+  /** All numbers, to be brought back by `restore`: up to date or not. */
+  save(system: System): SavedTracked {
+    if (!this.valid) return { ratio: this.ratio, numbers: undefined };
     const across = this.#columnState < 0 ? 0 : system.dimensionAt(system.slotOf(this.#columnState));
     return {
-      blocks: this.allBlocks(),
-      largest: copyFloats(this.#largest.address, system.slots),
-      column: across ? this.wholeColumn(system, across) : new Float64Array(0),
-      columnState: this.#columnState,
       ratio: this.ratio,
+      numbers: {
+        slots: this.slots,
+        rows: this.#rows,
+        columnState: this.#columnState,
+        blocks: this.allBlocks(),
+        largest: copyFloats(this.#largest.address, this.slots),
+        column: copyFloats(this.#column.address, across * system.positionOf(this.slots)),
+      },
     };
   }
 
-  restore(system: System, saved: ReturnType<Tracked["save"]>): void {
+  /** @param system one that has the leaves and rows, in the same order, of the system that the numbers were saved with. */
+  restore(system: System, { ratio, numbers }: SavedTracked): void {
+    this.ratio = ratio;
+    this.valid = false;
+    if (!numbers) return;
+    const { slots, rows, columnState, blocks, largest, column } = numbers;
     this.#blockStart.length = 1;
-    this.#reserveBlocks(system);
-    writeFloats(this.#blocks.address, saved.blocks);
-    writeFloats(this.#largest.address, saved.largest);
-    this.#column.reserve(8 * saved.column.length, 0);
-    writeFloats(this.#column.address, saved.column);
-    this.#columnState = saved.columnState;
-    this.ratio = saved.ratio;
-    this.#rows = system.added;
+    this.#reserveBlocks(system, slots);
+    writeFloats(this.#blocks.address, blocks);
+    writeFloats(this.#largest.address, largest);
+    this.#column.reserve(8 * column.length, 0);
+    writeFloats(this.#column.address, column);
+    this.#columnState = columnState;
+    this.#rows = rows;
     this.valid = true;
   }
 

@@ -128,3 +128,21 @@ describe.each([
     estimate.dispose();
   });
 });
+
+test("a solution read before the marginals is read again after them, though they have brought in a new base", () => {
+  const stream = families.net.make(160);
+  const estimate = new Estimate({ track: "all" });
+  let newBases = 0;
+  feed(stream, estimate, (s) => {
+    if (s % 9 !== 0) return;
+    const before = estimate.solution();
+    const { ledgerBytes } = estimate.statistics;
+    estimate.marginals();
+    if (ledgerBytes > 0 && estimate.statistics.ledgerBytes === 0) newBases += 1;
+    const after = estimate.solution();
+    const size = before.reduce((most, v) => Math.max(most, Math.abs(v)), 0);
+    for (const [k, v] of before.entries()) expect(Math.abs(after[k]! - v)).toBeLessThan(TOLERANCE * size);
+  });
+  expect(newBases).toBeGreaterThan(0);
+  estimate.dispose();
+});
