@@ -157,7 +157,7 @@ function advanceOrder(job: Analysis, budget: f64): i32 {
         if (!i32At(seen, v)) { setI32(seen, v, 1); setI32(order, b++, v); }
       }
     }
-    job.ordering = orderingBegin(blocks.graph, job.kind, job.local, 1, 0, job.queries);
+    job.ordering = orderingBegin(blocks.graph, job.kind, job.local, 1, 1, job.queries);
     if (!job.ordering) return OUT_OF_MEMORY;
   }
   const status = orderingAdvance(changetype<Ordering>(job.ordering), budget);
