@@ -12,7 +12,7 @@ const CANDIDATES = 200;
 const REPEATS = 5;
 
 /** What was measured after one sampled step, in milliseconds. */
-export interface Sample {
+interface Sample {
   readonly own: OwnTimes;
   /** The published recursion alone: its factor and the column are not counted. */
   readonly recursion: number | undefined;
