@@ -99,10 +99,13 @@ function finish(information: Information, symbolic: number, factor: number): Bas
     dimensions[slot] = blockSizes[s]!;
     c += blockSizes[s]!;
   }
-  const eta = Float64Array.from(elimination, (unknown) => vector[unknown]!);
-  const pivotSpread = withLoan("The pivots", (loan) =>
-    k.pivotSpread(factor, loan.floats(Float64Array.from({ length: order }, (_, j) => values[columnPointers[j]!]!))),
-  );
+  const eta = new Float64Array(order);
+  const diagonal = new Float64Array(order);
+  for (let c = 0; c < order; c += 1) {
+    eta[c] = vector[elimination[c]!]!;
+    diagonal[c] = values[columnPointers[c]!]!;
+  }
+  const pivotSpread = withLoan("The pivots", (loan) => k.pivotSpread(factor, loan.floats(diagonal)));
   const makeLedger = (): number =>
     withLoan("The ledger", (loan) => {
       const ledger = addressOrThrow("The ledger", k.ledgerCreate(factor, blockSizes.length, loan.ints(dimensions)), 16 * order);

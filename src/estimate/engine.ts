@@ -138,7 +138,10 @@ export class Engine {
       this.#dimensionOf,
     );
     if (!split) return yield* this.#rebase(world(), track, "new states that only the whole determines", false);
-    const arriving = [...plus.filter((owned) => !isNew(owned)), ...split.rest.map((rows) => ({ rows, measurement: -1 }))];
+    const arriving = [
+      ...plus.filter((owned) => !isNew(owned)),
+      ...split.rest.map((rows) => plus.find((owned) => owned.rows === rows) ?? { rows, measurement: -1 }),
+    ];
     if (rowCount > MOST_ROWS) return yield* this.#rebase(world(), track, `${rowCount} rows at once`, false);
 
     const before = this.system.events.length;

@@ -4,7 +4,7 @@ import { runSteps, runStepsInSlices, type SliceOptions, type Steps } from "../..
 import { NotPositiveDefiniteError, OptionError } from "../errors.js";
 import { factorize } from "../matrix/factorize.js";
 import { SymmetricMatrix } from "../matrix/symmetric-matrix.js";
-import { requireIndex, requireKnownOptions, requireWord } from "../support/checks.js";
+import { requireIndex, requireKnownOptions, requireLength, requireWord } from "../support/checks.js";
 import { absorb } from "./absorb.js";
 import { ArrivalOrder } from "./arrival.js";
 import type { Singular } from "./base.js";
@@ -408,8 +408,9 @@ export class Estimate {
   }
 
   /** The covariances of the states asked for (unless told, all, or those of a tracked list), each d × d, one after another.
+   *  @param into your array of that length, filled and returned: a fresh one of a large network costs more than its numbers.
    *  Cost: when all are kept, what has changed since the last reading; else a path each. */
-  marginals(states?: readonly StateId[]): Float64Array {
+  marginals(states?: readonly StateId[], into?: Float64Array): Float64Array {
     this.#requireIdle("marginals");
     this.#ready();
     const wanted = states ?? this.#chosen ?? this.#committed;
@@ -421,11 +422,11 @@ export class Estimate {
       this.#requireSure(this.#engine.trackedBound);
       let size = 0;
       for (const state of wanted) size += this.#states[state]!.dimension ** 2;
-      const all = new Float64Array(size);
+      const all = target("into", into, size);
       this.#arrange().blocksInto(all, tracked, tracked.viewBlocks());
       return all;
     }
-    return concatenate(this.#marginalOf(wanted.map((state) => system.slotOf(state))));
+    return concatenate(this.#marginalOf(wanted.map((state) => system.slotOf(state))), into);
   }
 
   /** Whether the kept blocks of slots below `slots` include all rows. */
@@ -476,8 +477,9 @@ export class Estimate {
   }
 
   /** The block column of Σ at one state: order × dimension, column-major, states in order of arrival.
+   *  @param into your array of that length, filled and returned.
    *  Cost: kept by `track`: what has changed; else one forward and one backward solve. */
-  blockColumn(state: StateId): Float64Array {
+  blockColumn(state: StateId, into?: Float64Array): Float64Array {
     this.#requireIdle("blockColumn");
     this.#slotOf(state, "blockColumn");
     if (this.#track === "all" && this.#trackedColumn(true) === state) this.#refresh();
@@ -487,7 +489,7 @@ export class Estimate {
     const kept = tracked.isCurrent(system, state);
     this.#requireSure(kept ? this.#engine.trackedBound : this.#engine.baseBound);
     const arrival = this.#arrange();
-    const column = new Float64Array(arrival.order * d);
+    const column = target("into", into, arrival.order * d);
     arrival.columnInto(column, kept ? tracked.viewColumn(system, d) : wholeColumn(system, slot), d);
     return column;
   }
@@ -868,8 +870,18 @@ export class Estimate {
   }
 }
 
-function concatenate(parts: readonly Float64Array[]): Float64Array {
-  const all = new Float64Array(parts.reduce((sum, part) => sum + part.length, 0));
+/** The caller's array, when there is one of the right length, or a new one. */
+function target(what: string, into: Float64Array | undefined, length: number): Float64Array {
+  if (into) requireLength(what, into.length, length);
+  return into ?? new Float64Array(length);
+}
+
+function concatenate(parts: readonly Float64Array[], into?: Float64Array): Float64Array {
+  const all = target(
+    "into",
+    into,
+    parts.reduce((sum, part) => sum + part.length, 0),
+  );
   let at = 0;
   for (const part of parts) {
     all.set(part, at);
