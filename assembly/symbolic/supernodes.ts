@@ -24,7 +24,7 @@ export class Partition {
   below: usize;
 }
 
-/** The largest share of stored zeros that a merge may leave, by the merged width. Measured on nets, patrols and helices: within
+/** The largest share of stored zeros that a merge may leave, by the merged width. Measured with a prototype on nets, patrols and helices: within
  *  10 % of the best of five settings on each. */
 function allowedZeros(width: i32): f64 {
   if (width <= 4) return 0.6;

@@ -51,9 +51,9 @@ const FIRST_PATH_SHARE = 0.05;
 const MOST_LEAVES = 64;
 /** Rows between old states that one commit may bring into the ledger. */
 const MOST_ROWS = 192;
-/** ε times the pivot spread, times this, bounds the relative error of a marginal from a fresh base: rounding of a Cholesky factor grows
- *  with the scaled condition (Demmel 1989; Higham, "Accuracy and Stability", ch. 10). Measured on 1 000 random ill-scaled networks, the
- *  largest error was 3.1 times ε times the spread. */
+/** ε times the pivot spread, times this, stands for the relative error of a marginal from a fresh base: rounding of a Cholesky factor grows
+ *  with the scaled condition (Demmel 1989; Higham, "Accuracy and Stability", ch. 10), of which the spread is a lower bound. The factor is
+ *  chosen, not yet measured. */
 const ERROR_FACTOR = 64;
 /** Removed rows that leave less than this share of what held a state: the difference is good to 2e-16 ÷ 1e-8, or is rounding alone. */
 const WEAK_REMOVAL = 1e-8;

@@ -1,7 +1,7 @@
 // When a new base pays: a cost model in nanoseconds of work, by counts alone, so that the same calls always take the same route.
 
-/** What one unit of each kind of work takes. Measured on the heavy patrol and the monitoring net of 10 000 states; the routes change
- *  little when one of them is off by half, since the cost of carrying on is flat around its best point. */
+/** What one unit of each kind of work takes, roughly: from profiles of streams of some thousand states, not yet fitted. The cost of carrying
+ *  on is flat around its best point, so routes change little when one of them is off by half. */
 const nanoseconds = {
   /** One multiplication and addition of the dense kernels in a factorization, small fronts included. */
   factorFlop: 0.1,
@@ -69,6 +69,5 @@ const SUSPECT_RATIO = 1e3;
 const SUSPECT_ERROR = 1e-10;
 
 /** Whether subtraction has eaten, or will eat, too many digits of a kept block: its relative error is that of the base times the ratio of
- *  the largest trace it has had to its trace now, and never heals, while a fresh block has the base's alone. Measured on a patrol of
- *  1 000 poses: it predicts both the jumps that ruin blocks and those that do not. */
+ *  the largest trace it has had to its trace now, and never heals, while a fresh block has the base's alone. */
 export const subtractionSpoils = (ratio: number, baseBound: number): boolean => ratio > SUSPECT_RATIO && ratio * baseBound > SUSPECT_ERROR;
