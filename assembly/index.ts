@@ -41,6 +41,6 @@ export {
   factorInnovation, scaleColumns, updateBlocks, traceRatio, updateColumn, takeColumn, leafColumn, blocksOfInverse,
 } from "./ledger/tracked";
 export {
-  ledgerX, ledgerGram, ledgerAdded, ledgerRemoved, ledgerBytes, ledgerFlops, ledgerLogDeterminant, strongestRow, weakestRemoval, weakestInnovation,
+  ledgerX, ledgerGram, ledgerAdded, ledgerRemoved, ledgerBytes, ledgerFlops, ledgerLogDeterminant, strongestRow, ledgerLoss, weakestInnovation,
 } from "./ledger/facts";
 export { householderScratch, triangularize } from "./dense/householder";

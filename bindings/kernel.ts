@@ -74,7 +74,7 @@ export interface KernelExports {
   ledgerFlops(ledger: number): number;
   ledgerLogDeterminant(ledger: number): number;
   strongestRow(ledger: number, since: number): number;
-  weakestRemoval(ledger: number): number;
+  ledgerLoss(ledger: number): number;
   weakestInnovation(ledger: number, plus: number, minus: number): number;
   addLeaf(ledger: number, dimension: number, count: number, parents: number, numbers: number, z: number): number;
   dropLeaves(ledger: number, slots: number): void;

@@ -28,20 +28,24 @@ export function strongestRow(l: Ledger, since: i32): f64 {
   return most;
 }
 
-/** Least pivot of K₂ K₂ᵀ = I − A₂ Σ₁ A₂ᵀ, a removed row's share of what held the states it read: rounding, relative to what is left, has
- *  grown by its reciprocal. 1 when nothing is removed. */
-export function weakestRemoval(l: Ledger): f64 { return leastSquare(l.kRemoved, l.removedRoom, 0, l.removed); }
-
-/** The same of a batch that factorInnovation has factored. */
-export function weakestInnovation(l: Ledger, plus: i32, minus: i32): f64 {
-  return leastSquare(l.schur, plus + minus, plus, plus + minus);
+/** By what factor rounding errors of base and leaves have grown in what the ledger makes of them, 1 at least: differences of large numbers.
+ *  An added row a makes what it reads 1 + a Σ₀ aᵀ times smaller (Σ₀: base and leaves alone), which is its diagonal entry of S; for a removed
+ *  row the pivot 1 − a Σ₁ aᵀ is what terms as large as a Σ₀ aᵀ have left. */
+export function ledgerLoss(l: Ledger): f64 {
+  let most: f64 = 1;
+  for (let q = 0; q < l.added; ++q) most = max(most, f64At(l.sAdded, q * (l.addedRoom + 1)));
+  for (let q = 0; q < l.removed; ++q) {
+    const d = f64At(l.kRemoved, q * (l.removedRoom + 1));
+    most = max(most, max<f64>(1, 1 + f64At(l.sRemoved, q * (l.removedRoom + 1))) / (d * d));
+  }
+  return most;
 }
 
-/** Least square of the diagonal entries [from, to) of a column-major matrix, 1 at most. */
-function leastSquare(a: usize, ld: i32, from: i32, to: i32): f64 {
+/** Least pivot among the removed rows of a batch that factorInnovation has factored, 1 at most: the share of what held a state that is left. */
+export function weakestInnovation(l: Ledger, plus: i32, minus: i32): f64 {
   let least: f64 = 1;
-  for (let q = from; q < to; ++q) {
-    const d = f64At(a, q * (ld + 1));
+  for (let q = plus, rows = plus + minus; q < rows; ++q) {
+    const d = f64At(l.schur, q * (rows + 1));
     least = min(least, d * d);
   }
   return least;

@@ -55,8 +55,8 @@ const MOST_ROWS = 192;
  *  with the scaled condition (Demmel 1989; Higham, "Accuracy and Stability", ch. 10), of which the spread is a lower bound. The factor is
  *  chosen, not yet measured. */
 const ERROR_FACTOR = 64;
-/** Removed rows that leave less than this share of what held a state: the difference is good to 2e-16 ÷ 1e-8, or is rounding alone. */
-const WEAK_REMOVAL = 1e-8;
+/** Removed rows whose differences have grown rounding errors by this: what is left of a state is good to 2e-16 × 1e8, or is rounding alone. */
+const SUSPICIOUS_LOSS = 1e8;
 /** A pivot that elimination has left this much smaller than its diagonal entry may be rounding alone: 500 ε. */
 const SUSPICIOUS_SPREAD = 1e13;
 /** Bounds below this are never a reason to keep an old base. */
@@ -87,6 +87,8 @@ export class Engine {
   /** What a row of the last commit took: the next one's prediction. */
   #flopsPerRow: number | undefined;
   #refusal: string | undefined;
+  /** The loss of digits in the ledger at which a new base was last refused: it is asked for again when ten times that is lost. */
+  #lossRefused = 0;
   #queries = 1000;
   /** A new base being built while the old one answers. */
   #background: Background | undefined;
@@ -111,10 +113,10 @@ export class Engine {
   get refusal(): string | undefined {
     return this.#refusal;
   }
-  /** A bound on the relative error of blocks computed now: that of the base over the share that removed rows have left; of tracked ones:
-   *  times the ratio of past to present trace. */
+  /** A bound on the relative error of blocks computed now: that of the base times what the ledger's differences cost; of tracked
+   *  ones: times the ratio of past to present trace. */
   get baseBound(): number {
-    return this.#system ? this.#baseBound / this.#system.weakest() : this.#baseBound;
+    return this.#system ? this.#baseBound * this.#system.loss() : this.#baseBound;
   }
   get trackedBound(): number {
     return this.baseBound * this.tracked.ratio;
@@ -148,25 +150,35 @@ export class Engine {
     const addedBefore = this.system.added;
     const predictedFlops = rowCount * (this.#flopsPerRow ?? 2 * FIRST_PATH_SHARE * this.system.base.costs.nonzeros);
     const flopsBefore = this.system.flops;
-    this.#intoLedger(arriving, minus, split.leaves, track, column);
+    try {
+      this.#intoLedger(arriving, minus, split.leaves, track, column);
+    } catch (error) {
+      if (!(error instanceof SingularBatch) || this.#hasFreeStates(world())) throw error;
+      return yield* this.#rebase(world(), track, "rounding has eaten what rows taken out of the ledger left", false);
+    }
     const countedFlops = this.system.flops - flopsBefore;
     if (rowCount > 0) this.#flopsPerRow = countedFlops / rowCount;
     let outcome = this.#ledgerOutcome(rowCount, predictedFlops, countedFlops, split.leaves.length, track);
-    if (minus.length > 0 && this.system.weakest() < WEAK_REMOVAL) {
+    const loss = this.system.loss();
+    if (minus.length > 0 && loss > SUSPICIOUS_LOSS) {
       this.tracked.valid = false;
       if (this.#hasFreeStates(world())) {
         this.#putBack(before);
         throw new SingularBatch(undefined);
       }
-      return yield* this.#afterLedger(outcome, "rows taken out held nearly all of what is left", world, track, column, before);
     }
+    const reasons: string[] = [];
     const strength = this.system.strongest(addedBefore);
     if (track && this.tracked.valid && subtractionSpoils(strength * this.tracked.ratio, this.#baseBound)) {
       this.tracked.valid = false;
-      const jump = `a reading made what it reads ${strength.toExponential(1)} times stronger: kept marginals are computed afresh`;
-      outcome = { ...outcome, because: `${outcome.because}; ${jump}` };
+      reasons.push(`a reading made what it reads ${strength.toExponential(1)} times stronger: kept marginals are computed afresh`);
+      outcome = { ...outcome, because: `${outcome.because}; ${reasons[0]}` };
     }
-    const reason = this.#wishForBase(measurements);
+    const isSpoilt = subtractionSpoils(loss, this.#baseBound) && loss > 10 * this.#lossRefused;
+    if (isSpoilt) reasons.push(`differences in the ledger have made rounding errors ${loss.toExponential(1)} times larger`);
+    const wish = this.#wishForBase(measurements);
+    if (wish) reasons.push(wish);
+    const reason = isSpoilt || wish ? reasons.join("; ") : undefined;
     if (this.#latencyBudget !== undefined) return this.#inBackground(outcome, reason, world, track, column, begun + this.#latencyBudget);
     return reason ? yield* this.#afterLedger(outcome, reason, world, track, column, before) : outcome;
   }
@@ -233,10 +245,15 @@ export class Engine {
     return { route: "ledger", because, predictedFlops, countedFlops };
   }
 
-  /** Why a new base is due, if it is. */
+  /** Why a new base is due, if it is. Each refusal doubles what has to speak for the next one. */
   #wishForBase(measurements: number): string | undefined {
     const { base, slots, bytes } = this.system;
-    const reason = rebasePays(this.#carried, rebaseCost(base.costs, slots, measurements) * this.#refused, bytes, base.costs);
+    const reason = rebasePays(
+      this.#carried,
+      rebaseCost(base.costs, slots, measurements) * this.#refused,
+      bytes / this.#refused,
+      base.costs,
+    );
     return reason && (reason === "cost" ? "carrying on has cost as much as a new base" : "the ledger has outgrown its share of memory");
   }
 
@@ -315,6 +332,7 @@ export class Engine {
 
   #refuse(why: string): void {
     this.#refusal = why;
+    this.#lossRefused = this.system.loss();
     this.#refused *= 2;
     this.#carried = 0;
   }
@@ -363,6 +381,7 @@ export class Engine {
     this.#baseBound = bound;
     this.#carried = 0;
     this.#refused = 1;
+    this.#lossRefused = 0;
     this.#refusal = undefined;
     return { route: "rebase", because, predictedFlops: base.costs.flops, countedFlops: base.costs.flops };
   }

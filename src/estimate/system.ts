@@ -246,9 +246,9 @@ export class System {
     return this.#k.strongestRow(this.base.ledger, since);
   }
 
-  /** The least share of what held some state that removed rows have left, 1 when none was removed. */
-  weakest(): number {
-    return this.#k.weakestRemoval(this.base.ledger);
+  /** By what factor the ledger's differences have made rounding errors larger, 1 at least. */
+  loss(): number {
+    return this.#k.ledgerLoss(this.base.ledger);
   }
 
   logDeterminant(): number {

@@ -9,7 +9,7 @@ const entry = (matrix: Float64Array | Nested, i: number, j: number, columns: num
   matrix instanceof Float64Array ? matrix[i * columns + j]! : matrix[i]![j]!;
 
 /** Sums of pairs by place in a lower triangle, rounded nowhere but in the last of 31 digits. */
-class ExactSums {
+export class ExactSums {
   readonly #entries: Map<number, DoubleDouble>[] = [];
   readonly #right: DoubleDouble[] = [];
 
