@@ -79,7 +79,7 @@ function recursionTime(made: ReturnType<typeof information>, own: Own): number {
 }
 
 /** `evaluate` of 200 candidates on the estimate as it stands. */
-export function evaluationTime(feed: Feed): number {
+function evaluationTime(feed: Feed): number {
   const candidates = feed.candidates(CANDIDATES);
   const begun = performance.now();
   feed.estimate.evaluate(candidates);

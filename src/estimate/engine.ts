@@ -24,6 +24,7 @@ export interface SavedEngine {
   readonly events: readonly SystemEvent[];
   readonly carried: number;
   readonly refused: number;
+  readonly lossRefused: number;
   readonly refusal: string | undefined;
   readonly flopsPerRow: number | undefined;
   readonly tracked: SavedTracked;
@@ -413,9 +414,8 @@ export class Engine {
         return;
     }
     if (system.events.length > 0) {
-      const outcome = runSteps(this.#rebase(world(), false, "marginals afresh", true));
-      if (outcome.route === "ledger") {
-        // The old base is the more exact one: blocks from it, one by one.
+      if (!this.#renewedForReading(world)) {
+        // The old base is the more exact one, or the only one to be had: blocks from it, one by one.
         this.tracked.fromLedger(this.system);
         this.tracked.refresh(this.system, column);
         return;
@@ -434,6 +434,7 @@ export class Engine {
       events: system.events,
       carried: this.#carried,
       refused: this.#refused,
+      lossRefused: this.#lossRefused,
       refusal: this.#refusal,
       flopsPerRow: this.#flopsPerRow,
       tracked: this.tracked.save(system),
@@ -442,7 +443,7 @@ export class Engine {
 
   /** Brings an empty engine to where another one was saved: its base is factored again, and what happened since is replayed in order.
    *  @throws {SingularBatch} the numbers of this kernel build do not bear it. After any failure: `free`. */
-  restore({ world, events, carried, refused, refusal, flopsPerRow, tracked }: SavedEngine): void {
+  restore({ world, events, carried, refused, lossRefused, refusal, flopsPerRow, tracked }: SavedEngine): void {
     const sizes = Int32Array.from(world.states, (state) => this.#dimensionOf(state));
     const base = runSteps(baseSteps(this.#assemble(world, sizes), this.#queries, this.#memoryLimit));
     if (isSingular(base)) throw new SingularBatch(base);
@@ -453,8 +454,20 @@ export class Engine {
     this.#baseBound = boundOf(base);
     this.#carried = carried;
     this.#refused = refused;
+    this.#lossRefused = lossRefused;
     this.#refusal = refusal;
     this.#flopsPerRow = flopsPerRow;
+  }
+
+  /** Takes a new base of everything, so that blocks can be read off it; false when the old one stays. */
+  #renewedForReading(world: () => World): boolean {
+    try {
+      return runSteps(this.#rebase(world(), false, "marginals afresh", true)).route === "rebase";
+    } catch (error) {
+      if (!(error instanceof SingularBatch)) throw error;
+      this.#refuse("a new base would not be definite in f64, while leaves and ledger still are");
+      return false;
+    }
   }
 
   free(): void {

@@ -58,7 +58,8 @@ export interface CommitReport {
   /** Flops that the route was expected to take: of a new base its factor, of the ledger what rows have taken before; and those counted. */
   readonly predictedFlops: number;
   readonly countedFlops: number;
-  /** A bound on the relative error of the marginals. */
+  /** An estimate of the relative error of the marginals. No proven bound: it rests on the pivots of the base, which tell the condition from
+   *  below, so where weights lie many orders of magnitude apart it can be far too small. */
   readonly bound: number;
 }
 
@@ -66,7 +67,7 @@ export interface CommitReport {
 export interface Health {
   /** Estimate of the condition number of the information matrix; infinite when f64 cannot factor it. */
   readonly condition: number;
-  /** A bound on the relative error of marginals read now. */
+  /** An estimate of the relative error of marginals read now; see `CommitReport.bound` for what it is worth. */
   readonly bound: number;
   readonly tolerance: number;
   /** Largest relative difference between sampled kept blocks and fresh ones. */
