@@ -6,7 +6,7 @@
 import { allocateArray, release } from "./memory/heap";
 import { addF64, atF64, f64At, i32At, setF64 } from "./memory/access";
 import { Factor } from "./factor/cholesky";
-import { backwardSolve, forwardSolve } from "./solve/triangular";
+import { backwardSolve, forwardSolve, gatherRoom } from "./solve/triangular";
 
 const ROUNDS = 5;
 /** Unit vectors tried so far: two a round. */
@@ -65,7 +65,7 @@ function scatterSigns(n: i32, x: usize, c: i32, scale: f64, state: u32): u32 {
 export function reciprocalCondition(f: Factor, columnStart: usize, rowIndex: usize, values: usize): f64 {
   const s = f.symbolic, n = s.n;
   if (n == 0) return 0;
-  const x = allocateArray(6 * <f64>n, 3), buffer = allocateArray(2 * <f64>s.deepest, 3);
+  const x = allocateArray(6 * <f64>n, 3), buffer = allocateArray(gatherRoom(s, 2), 3);
   let result: f64 = -1;
   if (x && buffer) {
     const ofA = norm(n, columnStart, rowIndex, values, x);

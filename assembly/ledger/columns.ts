@@ -11,17 +11,17 @@ import { rankUpdateLower } from "../dense/rank-update";
 import { mirror } from "../dense/transpose";
 import { ADD, ASSIGN, SUBTRACT } from "../dense/mode";
 import { addPath } from "../solve/reach";
-import { backwardSolve, forwardSolve } from "../solve/triangular";
+import { backwardSolve, forwardSolve, gatherRoom, stride } from "../solve/triangular";
 import { backwardLeaves, forwardLeaves } from "./leaves";
 import { leaves, Ledger, regrow, slotDimension } from "./ledger";
 import { solveSigned, weighSigned } from "./signed";
 
 /** Makes room for `columns` right-hand sides and forgets those before. OK or OUT_OF_MEMORY. Call it first; then load. */
 export function beginColumns(l: Ledger, columns: i32): i32 {
-  const need = <f64>columns * <f64>l.positions;
+  const side = stride(columns), need = <f64>side * <f64>l.positions;
   clearColumns(l);
   if (need > l.xRoom) {
-    const room = need + <f64>(columns * (l.positionRoom - l.positions)), x = regrow(l.x, 0, room, 3);
+    const room = need + <f64>(side * (l.positionRoom - l.positions)), x = regrow(l.x, 0, room, 3);
     if (!x) return OUT_OF_MEMORY;
     memory.fill(x, 0, <usize>room << 3);
     l.x = x;
@@ -45,12 +45,13 @@ export function beginColumns(l: Ledger, columns: i32): i32 {
     l.gramRoom = columns;
   }
   l.columns = columns;
+  l.side = side;
   return OK;
 }
 
 /** Room to gather `columns` columns at the rows below a supernode, and at all rows that a chunk may hold, whether they count or not. */
 export function reserveBuffer(l: Ledger, columns: i32): i32 {
-  const s = l.factor.symbolic, room = <f64>columns * (<f64>max(s.deepest, s.widest) + <f64>(l.addedRoom + l.removedRoom));
+  const s = l.factor.symbolic, room = gatherRoom(s, columns) + <f64>columns * <f64>(l.addedRoom + l.removedRoom);
   if (room <= l.bufferRoom) return OK;
   const buffer = regrow(l.buffer, 0, 2 * room, 3);
   if (!buffer) return OUT_OF_MEMORY;
@@ -83,7 +84,7 @@ function touch(l: Ledger, slot: i32): void {
 /** Adds a block of Aᵀ to columns [from, from + rows): block f64[rows × dimension], column-major (the rows of one unknown side by
  *  side), for the state in `slot`. */
 export function loadBlock(l: Ledger, from: i32, rows: i32, slot: i32, block: usize): void {
-  const first = i32At(l.slotPosition, slot), d = slotDimension(l, slot), k = l.columns;
+  const first = i32At(l.slotPosition, slot), d = slotDimension(l, slot), k = l.side;
   for (let u = 0; u < d; ++u) {
     const x = atF64(l.x, (first + u) * k + from);
     for (let q = 0; q < rows; ++q) setF64(x, q, f64At(x, q) + f64At(block, u * rows + q));
@@ -93,7 +94,7 @@ export function loadBlock(l: Ledger, from: i32, rows: i32, slot: i32, block: usi
 
 /** Adds the unit columns of the state in `slot` to columns from … from + dimension − 1. */
 export function loadUnits(l: Ledger, from: i32, slot: i32): void {
-  const first = i32At(l.slotPosition, slot), d = slotDimension(l, slot), k = l.columns;
+  const first = i32At(l.slotPosition, slot), d = slotDimension(l, slot), k = l.side;
   for (let u = 0; u < d; ++u) setF64(l.x, (first + u) * k + from + u, 1);
   touch(l, slot);
 }
@@ -141,7 +142,7 @@ function subtractGram(l: Ledger, rows: i32, f: usize, room: i32, sign: f64): voi
 
 /** Calls for each node that x touches: its first entry of x, its width, its chunk. */
 function visitNodes(l: Ledger, visit: (l: Ledger, x: usize, width: i32, node: i32) => void): void {
-  const s = l.factor.symbolic, k = l.columns;
+  const s = l.factor.symbolic, k = l.side;
   for (let e = l.listFrom; e < s.supernodes; ++e) {
     const t = i32At(l.list, e), first = i32At(s.first, t);
     visit(l, atF64(l.x, first * k), i32At(s.first, t + 1) - first, t);
@@ -161,10 +162,10 @@ function visitNodes(l: Ledger, visit: (l: Ledger, x: usize, width: i32, node: i3
 
 function compareNode(l: Ledger, x: usize, width: i32, node: i32): void {
   const k = l.columns, chunk = chunkOf(l, node), count = load<i32>(chunk, 4);
-  rankUpdateLower(k, width, x, k, l.ownGram, k, ADD);
+  rankUpdateLower(k, width, x, l.side, l.ownGram, k, ADD);
   l.flops += <f64>k * (2 * nodeEntries(l, node, width) + <f64>width * <f64>(k + 2 * count));
   if (!count) return;
-  multiply(count, k, width, chunkNumbers(chunk), load<i32>(chunk, 8), x, k, 1, l.buffer, count, ASSIGN);
+  multiply(count, k, width, chunkNumbers(chunk), load<i32>(chunk, 8), x, l.side, 1, l.buffer, count, ASSIGN);
   const ids: usize = load<u32>(chunk);
   for (let q = 0; q < count; ++q) {
     const id = i32At(ids, q);
@@ -191,12 +192,12 @@ export function baseValues(l: Ledger, value: usize): void {
   memory.fill(value, 0, <usize>k << 3);
   for (let e = l.listFrom; e < s.supernodes; ++e) {
     const t = i32At(l.list, e), first = i32At(s.first, t);
-    multiply(k, 1, i32At(s.first, t + 1) - first, atF64(l.x, first * k), k, atF64(l.y, first), 1, 0, value, k, ADD);
+    multiply(k, 1, i32At(s.first, t + 1) - first, atF64(l.x, first * l.side), l.side, atF64(l.y, first), 1, 0, value, k, ADD);
   }
   for (let leaf = 0; leaf <= l.lastLeaf; ++leaf) {
     if (!load<u8>(l.leafMark + leaf)) continue;
     const slot = l.baseSlots + leaf, first = i32At(l.slotPosition, slot);
-    multiply(k, 1, slotDimension(l, slot), atF64(l.x, first * k), k, atF64(l.y, first), 1, 0, value, k, ADD);
+    multiply(k, 1, slotDimension(l, slot), atF64(l.x, first * l.side), l.side, atF64(l.y, first), 1, 0, value, k, ADD);
   }
 }
 
@@ -235,7 +236,7 @@ export function keepColumns(l: Ledger, from: i32, rows: i32, id: i32): void {
 }
 
 function keepChunk(l: Ledger, x: usize, width: i32, node: i32): void {
-  const chunk = chunkOf(l, node), count = load<i32>(chunk, 4), room = load<i32>(chunk, 8), k = l.columns;
+  const chunk = chunkOf(l, node), count = load<i32>(chunk, 4), room = load<i32>(chunk, 8), k = l.side;
   const numbers = chunkNumbers(chunk), ids: usize = load<u32>(chunk);
   for (let q = 0; q < chunkRows; ++q) {
     setI32(ids, count + q, chunkId >= 0 ? chunkId + q : chunkId - q);
@@ -297,7 +298,7 @@ function nodeWidth(l: Ledger, node: i32): i32 {
  *  all: at every node that V touches; else only at those on x's list. */
 function combine(l: Ledger, all: bool): void {
   if (!all) { visitNodes(l, combineNode); return; }
-  const s = l.factor.symbolic, k = l.columns;
+  const s = l.factor.symbolic, k = l.side;
   for (let t = 0; t < s.supernodes; ++t) {
     if (!load<i32>(chunkOf(l, t), 4)) continue;
     const first = i32At(s.first, t);
@@ -320,7 +321,7 @@ function combineNode(l: Ledger, x: usize, width: i32, node: i32): void {
     const stride = <usize>(id >= 0 ? l.addedRoom : l.removedRoom) << 3;
     for (let j = 0; j < k; ++j, from += stride) setF64(l.buffer, q * k + j, load<f64>(from));
   }
-  multiply(k, width, count, l.buffer, k, chunkNumbers(chunk), 1, load<i32>(chunk, 8), x, k, SUBTRACT);
+  multiply(k, width, count, l.buffer, k, chunkNumbers(chunk), 1, load<i32>(chunk, 8), x, l.side, SUBTRACT);
 }
 
 /** Loads the ledger's added rows from `since` on, as they stand in the chunks (L⁻¹ Aᵀ already), into columns [0, added − since), with
@@ -328,7 +329,7 @@ function combineNode(l: Ledger, x: usize, width: i32, node: i32): void {
  *  carryBack they are B of the batch that came since.  Requires that nothing is removed and that only rows before `since` count now
  *  (countAdded); other columns may have been carried forward before. */
 export function loadKept(l: Ledger, since: i32, rows: i32): void {
-  const s = l.factor.symbolic, k = l.columns, ld = l.addedRoom;
+  const s = l.factor.symbolic, side = l.side, ld = l.addedRoom;
   for (let node = 0, end = s.supernodes + leaves(l); node < end; ++node) {
     const chunk = chunkOf(l, node), count = load<i32>(chunk, 4), room = load<i32>(chunk, 8), ids: usize = load<u32>(chunk);
     if (!count || i32At(ids, count - 1) < since) continue; // ids ascend while nothing is removed
@@ -337,14 +338,14 @@ export function loadKept(l: Ledger, since: i32, rows: i32): void {
     if (isLeaf) touch(l, slot); else l.listFrom = addPath(s, node, l.list, l.listFrom, l.mark);
     for (let q = count - 1; q >= 0 && i32At(ids, q) >= since; --q) {
       const column = i32At(ids, q) - since;
-      for (let u = 0; u < width; ++u) setF64(l.x, (first + u) * k + column, f64At(numbers, u * room + q));
+      for (let u = 0; u < width; ++u) setF64(l.x, (first + u) * side + column, f64At(numbers, u * room + q));
     }
   }
   for (let q = 0; q < rows; ++q) {
     for (let i = 0; i < since; ++i) setF64(l.fAdded, q * ld + i, f64At(l.kAdded, i * ld + since + q));
     for (let i = q; i < rows; ++i) setF64(l.schur, q * rows + i, f64At(l.kAdded, (since + q) * ld + since + i));
   }
-  for (let j = 0; j < k; ++j) memory.fill(atF64(l.fAdded, j * ld + since), 0, <usize>rows << 3); // rows that do not count weigh nothing
+  for (let j = 0; j < l.columns; ++j) memory.fill(atF64(l.fAdded, j * ld + since), 0, <usize>rows << 3); // rows that do not count weigh nothing
 }
 
 /** Makes only the first `count` added rows count, for loadKept; returns how many did. The others stay where they are. */
@@ -393,7 +394,7 @@ function weigh(l: Ledger): void { weighSigned(l, l.fAdded, l.fRemoved, l.columns
 
 /** Zeroes x wherever it was touched, and the marks. */
 export function clearColumns(l: Ledger): void {
-  const s = l.factor.symbolic, k = l.columns;
+  const s = l.factor.symbolic, k = l.side;
   if (l.listFrom < 0) {
     memory.fill(l.x, 0, <usize>k * <usize>l.positions << 3);
     memory.fill(l.mark, 0, <usize>s.supernodes << 2);

@@ -56,7 +56,7 @@ export function dropLeaves(l: Ledger, slots: i32): void {
 
 /** X := L_leaf⁻¹ X through all marked leaves, newest first; marks the parents reached, and calls for the base by `reachBase`. */
 export function forwardLeaves(l: Ledger, reachBase: (l: Ledger, slot: i32) => void): void {
-  const k = l.columns, x = l.x, base = l.baseSlots;
+  const k = l.side, x = l.x, base = l.baseSlots;
   for (let leaf = l.lastLeaf; leaf >= 0; --leaf) {
     if (!load<u8>(l.leafMark + leaf)) continue;
     const slot = base + leaf, d = slotDimension(l, slot);
@@ -75,7 +75,7 @@ export function forwardLeaves(l: Ledger, reachBase: (l: Ledger, slot: i32) => vo
 
 /** X := L_leaf⁻ᵀ X, oldest first, after the base has been solved. all: every leaf; else only the marked ones. */
 export function backwardLeaves(l: Ledger, all: bool): void {
-  const k = l.columns, x = l.x, base = l.baseSlots;
+  const k = l.side, x = l.x, base = l.baseSlots;
   for (let leaf = 0, end = all ? leaves(l) : l.lastLeaf + 1; leaf < end; ++leaf) {
     if (!all && !load<u8>(l.leafMark + leaf)) continue;
     const slot = base + leaf, d = slotDimension(l, slot);

@@ -6,7 +6,7 @@
  *      Λ = Λ₀ + Aᵀ C A,   Σ = L⁻ᵀ (I − V S⁻¹ Vᵀ) L⁻¹,   S = C + Vᵀ V.
  *  Everything here stands in *positions*: the base's columns in elimination order, then the leaves' unknowns as they came. A *slot* is
  *  a state, numbered by position; a *node* is a supernode of the base or, after those, a leaf.
- *  Right-hand sides lie side by side for each position (columns × positions, column-major).
+ *  Right-hand sides lie side by side for each position, in whole pairs (side × positions, column-major).
  *  Sources: Woodbury (1950); Sherman, Morrison (1950); Golub, Van Loan, "Matrix Computations", section 2.1.4. */
 import { allocateArray, release } from "../memory/heap";
 import { i32At, setI32 } from "../memory/access";
@@ -41,10 +41,12 @@ export class Ledger {
   /** f64[positionRoom]: y = L⁻¹ η, the right-hand side of base and leaves carried into their coordinates. */
   y: usize;
 
-  /** Right-hand sides being worked on: f64[columns × positions], how many f64 there is room for, zero outside the listed nodes. */
+  /** Right-hand sides being worked on: f64[side × positions], how many f64 there is room for, zero outside the listed nodes and beyond
+   *  `columns`; side = stride(columns). */
   x: usize;
   xRoom: f64;
   columns: i32;
+  side: i32;
   /** i32[supernodes] and marks: the base's nodes that x touches, list[listFrom …], children first. */
   list: usize;
   listFrom: i32;

@@ -45,7 +45,7 @@ export function factorInnovation(l: Ledger, plus: i32, minus: i32): i32 {
 
 /** Columns [0, rows) := themselves times K⁻ᵀ (schur), in x over its reach and in f, so that carryBack gives B. */
 export function scaleColumns(l: Ledger, rows: i32): void {
-  const s = l.factor.symbolic, k = l.columns;
+  const s = l.factor.symbolic, k = l.side;
   for (let e = l.listFrom; e < s.supernodes; ++e) {
     const t = i32At(l.list, e), first = i32At(s.first, t);
     solveLowerMany(rows, i32At(s.first, t + 1) - first, l.schur, rows, atF64(l.x, first * k), k);
@@ -62,7 +62,7 @@ export function scaleColumns(l: Ledger, rows: i32): void {
 /** blocks := blocks − B J Bᵀ for slots [from, to); `block` is the address of slot `from`'s. largest f64 by slot: the largest trace that
  *  a block has had since it was computed afresh; kept. */
 export function updateBlocks(l: Ledger, plus: i32, minus: i32, from: i32, to: i32, block: usize): void {
-  const k = l.columns;
+  const k = l.side;
   for (let slot = from; slot < to; ++slot) {
     const d = slotDimension(l, slot), b = atF64(l.x, i32At(l.slotPosition, slot) * k);
     for (let j = 0; j < d; ++j) {
@@ -98,7 +98,7 @@ export function traceRatio(l: Ledger, blocks: usize, largest: usize): f64 {
 
 /** column (across × positions) := column − (B's rows at `slot`)ᵀ J B: the block column of the state in `slot` after the batch. */
 export function updateColumn(l: Ledger, plus: i32, minus: i32, slot: i32, column: usize): void {
-  const k = l.columns, across = slotDimension(l, slot), own = atF64(l.x, i32At(l.slotPosition, slot) * k), turned = l.buffer;
+  const k = l.side, across = slotDimension(l, slot), own = atF64(l.x, i32At(l.slotPosition, slot) * k), turned = l.buffer;
   for (let q = 0; q < plus + minus; ++q) {
     for (let j = 0; j < across; ++j) setF64(turned, q * across + j, f64At(own, j * k + q) * (q < plus ? 1 : -1));
   }
@@ -107,7 +107,7 @@ export function updateColumn(l: Ledger, plus: i32, minus: i32, slot: i32, column
 
 /** column := the worked-on columns [from, from + dimension of slot), carried back: Σ before the batch at the units of `slot`. */
 export function takeColumn(l: Ledger, from: i32, slot: i32, column: usize): void {
-  const k = l.columns, across = slotDimension(l, slot);
+  const k = l.side, across = slotDimension(l, slot);
   for (let p = 0; p < l.positions; ++p) {
     for (let j = 0; j < across; ++j) setF64(column, p * across + j, f64At(l.x, p * k + from + j));
   }

@@ -8,7 +8,7 @@ import { dot } from "../dense/vector";
 import { Factor } from "../factor/cholesky";
 import { Symbolic } from "../symbolic/symbolic";
 import { addPath, clearMarks } from "./reach";
-import { backwardSolve, forwardSolve } from "./triangular";
+import { backwardSolve, forwardSolve, gatherRoom } from "./triangular";
 
 /** Wanted rows of one column from which a backward solve is cheaper than a forward solve each (a backward solve over their
  *  ancestors costs about as much as two forward solves of the same size). */
@@ -33,7 +33,7 @@ export function inverseEntries(f: Factor, rows: usize, columns: usize, count: i3
   if (!address) return OUT_OF_MEMORY;
   const w = changetype<Workspace>(address);
   w.x = allocateArray(2 * <f64>s.n, 3);
-  w.buffer = allocateArray(<f64>s.deepest, 3);
+  w.buffer = allocateArray(gatherRoom(s, 1), 3);
   w.listX = allocateArray(3 * <f64>s.supernodes, 2);
   const complete = w.x && w.buffer && w.listX;
   if (complete) {

@@ -6,7 +6,7 @@ import { f64At, i32At, setF64 } from "../memory/access";
 import { OK, RUNNING } from "../memory/status";
 import { Factor } from "../factor/cholesky";
 import { addPath, clearMarks } from "./reach";
-import { backwardSolve, forwardSolve } from "./triangular";
+import { backwardSolve, forwardSolve, gatherRoom, stride } from "./triangular";
 
 /** Right-hand sides that go through the panels together. A guess: four
  *  vectors of lanes; not tuned yet. */
@@ -33,7 +33,7 @@ export class SolveJob {
   at: i32;
   /** Supernodes that the forward half walks: reach[reachFrom … supernodes − 1]. */
   reachFrom: i32;
-  /** f64[GROUP × n] and f64[GROUP × deepest]. */
+  /** f64[stride × n] of a group, and f64[gatherRoom]. */
   x: usize;
   buffer: usize;
   /** i32[supernodes] twice. */
@@ -44,7 +44,7 @@ export class SolveJob {
 /** Starts solving for `columns` right-hand sides in `target`, or for the inverse's columns `units` into it. The factor must be
  *  complete and stay. Null when memory runs out. */
 export function solveBegin(factor: Factor, target: usize, columns: i32, units: usize): SolveJob | null {
-  const s = factor.symbolic, group = <f64>min(columns, GROUP);
+  const s = factor.symbolic, group = <f64>stride(min(columns, GROUP));
   const address = allocateArray(1, 7);
   if (!address) return null;
   assert(offsetof<SolveJob>() <= 128);
@@ -55,7 +55,7 @@ export function solveBegin(factor: Factor, target: usize, columns: i32, units: u
   job.units = units;
   job.columns = columns;
   job.x = allocateArray(group * <f64>s.n, 3);
-  job.buffer = allocateArray(group * <f64>s.deepest, 3);
+  job.buffer = allocateArray(gatherRoom(s, min(columns, GROUP)), 3);
   job.reach = allocateArray(2 * <f64>s.supernodes, 2);
   job.mark = job.reach + (<usize>s.supernodes << 2);
   if (!job.x || !job.buffer || !job.reach) { solveRelease(job); return null; }
@@ -97,8 +97,8 @@ export function solveAdvance(job: SolveJob, budget: f64): i32 {
       if (from == 0) job.phase = STORE;
     } else {
       for (let c = 0; c < columns; ++c) {
-        const target = job.target + (<usize>(job.group + c) * <usize>s.n << 3);
-        for (let k = 0; k < s.n; ++k) setF64(target, i32At(s.order, k), load<f64>(job.x + (<usize>k * <usize>columns + <usize>c << 3)));
+        const target = job.target + (<usize>(job.group + c) * <usize>s.n << 3), side = <usize>stride(columns);
+        for (let k = 0; k < s.n; ++k) setF64(target, i32At(s.order, k), load<f64>(job.x + (<usize>k * side + <usize>c << 3)));
       }
       spent += <f64>(s.n * columns);
       job.phase = LOAD;
@@ -118,19 +118,19 @@ export function solveProgress(job: SolveJob): f64 {
 
 /** Brings the group's right-hand sides into elimination order, side by side. */
 function loadGroup(job: SolveJob, columns: i32): void {
-  const s = job.factor.symbolic, n = s.n;
+  const s = job.factor.symbolic, n = s.n, side = <usize>stride(columns);
+  memory.fill(job.x, 0, <usize>n * side << 3);
   if (!job.units) {
     for (let c = 0; c < columns; ++c) {
       const target = job.target + (<usize>(job.group + c) * <usize>n << 3);
-      for (let k = 0; k < n; ++k) store<f64>(job.x + (<usize>k * <usize>columns + <usize>c << 3), f64At(target, i32At(s.order, k)));
+      for (let k = 0; k < n; ++k) store<f64>(job.x + (<usize>k * side + <usize>c << 3), f64At(target, i32At(s.order, k)));
     }
     return;
   }
-  memory.fill(job.x, 0, <usize>n * <usize>columns << 3);
   let from = s.supernodes;
   for (let c = 0; c < columns; ++c) {
     const k = i32At(s.place, i32At(job.units, job.group + c));
-    store<f64>(job.x + (<usize>k * <usize>columns + <usize>c << 3), 1);
+    store<f64>(job.x + (<usize>k * side + <usize>c << 3), 1);
     from = addPath(s, i32At(s.supernodeOf, k), job.reach, from, job.mark);
   }
   clearMarks(job.reach, from, s.supernodes, job.mark);

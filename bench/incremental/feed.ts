@@ -24,11 +24,25 @@ export class Feed {
   readonly ids: StateId[] = [];
   readonly #stream: Stream;
   readonly #reads: boolean;
+  /** What is read goes into the same arrays at every step, as a caller who reads that often would have it. */
+  readonly #blocks: Float64Array;
+  readonly #column: Float64Array;
+  #blockNumbers = 0;
+  #order = 0;
   #next = 0;
 
   constructor(stream: Stream, { reads, ...options }: EstimateOptions & { readonly reads: boolean }) {
     this.#stream = stream;
     this.#reads = reads;
+    let [blockNumbers, order, widest] = [0, 0, 0];
+    for (let s = 0; s < stream.states; s += 1) {
+      const d = stream.dimension(s);
+      blockNumbers += d * d;
+      order += d;
+      widest = Math.max(widest, d);
+    }
+    this.#blocks = new Float64Array(reads ? blockNumbers : 0);
+    this.#column = new Float64Array(reads ? order * widest : 0);
     this.estimate = new Estimate(options);
     if (options.track === "all") this.estimate.track("all", { column: "newest" });
   }
@@ -52,8 +66,9 @@ export class Feed {
     const report = estimate.commit();
     const committed = performance.now();
     if (this.#reads) {
-      estimate.marginals();
-      estimate.blockColumn(this.ids.at(-1)!);
+      const newest = this.ids.at(-1)!;
+      estimate.marginals(undefined, this.#blocks.subarray(0, this.#blockNumbers));
+      estimate.blockColumn(newest, this.#column.subarray(0, this.#order * this.#stream.dimension(newest)));
     }
     const read = performance.now();
     const revisit = inputs.measurements.length > inputs.dimensions.length;
@@ -73,7 +88,11 @@ export class Feed {
   }
 
   #add({ dimensions, measurements }: Arrivals): void {
-    for (const dimension of dimensions) this.ids.push(this.estimate.addState(dimension));
+    for (const dimension of dimensions) {
+      this.ids.push(this.estimate.addState(dimension));
+      this.#blockNumbers += dimension ** 2;
+      this.#order += dimension;
+    }
     for (const measurement of measurements) this.estimate.addMeasurement(measurement);
   }
 

@@ -178,12 +178,21 @@ export class System {
   }
   /** Σ Aᵀ at one slot, columns × dimension: `columns` numbers for each unknown, after `back` or `backTo`. */
   columnsAt(slot: number, columns: number): Float64Array {
-    return copyFloats((this.#k.ledgerX(this.base.ledger) >>> 0) + 8 * columns * this.#position[slot]!, columns * this.dimensionAt(slot));
+    return this.#columnsFrom(this.#position[slot]!, this.dimensionAt(slot), columns);
   }
 
   /** Σ Aᵀ at all positions, `columns` numbers for each, after `back`. */
   columns(columns: number): Float64Array {
-    return copyFloats(this.#k.ledgerX(this.base.ledger) >>> 0, columns * this.positions);
+    return this.#columnsFrom(0, this.positions, columns);
+  }
+
+  #columnsFrom(position: number, count: number, columns: number): Float64Array {
+    // In the kernel, several columns lie side by side in whole pairs.
+    const side = columns === 1 ? 1 : (columns + 1) & ~1;
+    const x = new Float64Array(this.#k.memory.buffer, (this.#k.ledgerX(this.base.ledger) >>> 0) + 8 * side * position, side * count);
+    const copy = new Float64Array(columns * count);
+    for (let p = 0, to = 0; p < count; p += 1) for (let c = 0; c < columns; c += 1, to += 1) copy[to] = x[p * side + c]!;
+    return copy;
   }
 
   /** The estimate at all positions. Cost: one backward solve. */
