@@ -95,12 +95,31 @@ export interface KernelExports {
   dropRow(ledger: number, id: number): void;
   factorInnovation(ledger: number, plus: number, minus: number): number;
   scaleColumns(ledger: number, rows: number): void;
-  updateBlocks(ledger: number, plus: number, minus: number, from: number, to: number, block: number): void;
-  traceRatio(ledger: number, blocks: number, largest: number): number;
-  updateColumn(ledger: number, plus: number, minus: number, slot: number, column: number): void;
-  takeColumn(ledger: number, from: number, slot: number, column: number): void;
-  leafColumn(ledger: number, slot: number, column: number, next: number, block: number, scratch: number): void;
-  blocksOfInverse(ledger: number, inverse: number, blocks: number): void;
+  updateKept(
+    ledger: number,
+    plus: number,
+    minus: number,
+    fresh: number,
+    target: number,
+    places: number,
+    blocks: number,
+    largest: number,
+    column: number,
+    lead: number,
+  ): number;
+  followLeaf(
+    ledger: number,
+    slot: number,
+    places: number,
+    blocks: number,
+    column: number,
+    lead: number,
+    rows: number,
+    scratch: number,
+  ): void;
+  extendColumn(ledger: number, slot: number, across: number, places: number, column: number, lead: number, scratch: number): void;
+  blocksOfInverse(ledger: number, inverse: number, places: number, blocks: number): void;
+  forgetPast(ledger: number, places: number, blocks: number, largest: number): void;
 }
 
 /** What kernel calls return; a positive number is 1 + the offending unknown. The same as assembly/memory/status.ts. */

@@ -25,6 +25,7 @@ export class Own {
   readonly #loan = new Loan("The bench");
   readonly #values: number;
   readonly #right: number;
+  readonly #places: number;
   readonly #blocks: number;
   readonly #blockNumbers: number;
   readonly #newest: { readonly slot: number; readonly dimension: number };
@@ -40,6 +41,7 @@ export class Own {
     this.#values = this.#loan.floats(values);
     this.#blockNumbers = blockSizes.reduce((sum, d) => sum + d * d, 0);
     this.#blocks = this.#loan.room(8 * this.#blockNumbers);
+    this.#places = this.#loan.ints(placesOf(blockSizes, base.stateOfSlot));
     this.#right = this.#loan.floats(Float64Array.from(this.elimination(), (unknown) => vector[unknown]!));
     this.#newest = { slot: base.stateOfSlot.indexOf(blockSizes.length - 1), dimension: blockSizes.at(-1)! };
   }
@@ -70,7 +72,7 @@ export class Own {
     const factored = performance.now();
     const inverse = k.inverseBegin(factor, 1) >>> 0;
     while (k.inverseAdvance(inverse, 1e18) === status.running);
-    k.blocksOfInverse(ledger, inverse, this.#blocks);
+    k.blocksOfInverse(ledger, inverse, this.#places, this.#blocks);
     k.inverseRelease(inverse);
     copyFloats(this.#blocks, this.#blockNumbers);
     const inverted = performance.now();
@@ -93,4 +95,16 @@ export class Own {
     this.#loan.giveBack();
     this.#base.free();
   }
+}
+
+/** For each slot where its state's block lies in order of arrival, its first unknown, and its number. */
+function placesOf(dimensions: Int32Array, stateOfSlot: Int32Array): Int32Array {
+  const [block, row] = [new Int32Array(dimensions.length + 1), new Int32Array(dimensions.length + 1)];
+  for (const [state, d] of dimensions.entries()) {
+    block[state + 1] = block[state]! + d * d;
+    row[state + 1] = row[state]! + d;
+  }
+  const places = new Int32Array(3 * stateOfSlot.length);
+  for (const [slot, state] of stateOfSlot.entries()) places.set([block[state]!, row[state]!, state], 3 * slot);
+  return places;
 }

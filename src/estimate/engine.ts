@@ -437,7 +437,7 @@ export class Engine {
       lossRefused: this.#lossRefused,
       refusal: this.#refusal,
       flopsPerRow: this.#flopsPerRow,
-      tracked: this.tracked.save(system),
+      tracked: this.tracked.save(),
     };
   }
 

@@ -113,6 +113,9 @@ export class Estimate {
   #absorbedFreedom = 0;
   /** States in force, in order of arrival: the same array while none is forgotten. */
   #committed: StateId[] = [];
+  /** Their unknowns, and the numbers of their blocks. */
+  #order = 0;
+  #blockNumbers = 0;
   readonly #arrival = new ArrivalOrder();
   #newStates: StateId[] = [];
   #added: MeasurementId[] = [];
@@ -290,8 +293,10 @@ export class Estimate {
 
   /** Everything pending has been applied: the books follow. Nothing here can fail. */
   #settle(): void {
-    for (const state of this.#newStates) this.#states[state]!.standing = "committed";
-    this.#committed.push(...this.#newStates);
+    for (const state of this.#newStates) {
+      this.#states[state]!.standing = "committed";
+      this.#takeIn(state);
+    }
     for (const measurement of this.#added) this.#measurements[measurement]!.standing = "committed";
     for (const measurement of this.#withdrawn) this.#measurements[measurement]!.standing = "withdrawn";
     for (const [measurement, rows] of this.#replaced) this.#measurements[measurement]!.rows = rows;
@@ -304,6 +309,13 @@ export class Estimate {
     this.#replaced = new Map();
     this.#forgotten = new Set();
     this.#solution = undefined;
+  }
+
+  #takeIn(state: StateId): void {
+    const { dimension } = this.#states[state]!;
+    this.#committed.push(state);
+    this.#order += dimension;
+    this.#blockNumbers += dimension ** 2;
   }
 
   /** Condenses all rows that read the forgotten states into rows on their neighbours. */
@@ -321,7 +333,12 @@ export class Estimate {
     this.#absorbedSquares += left.squares;
     this.#absorbedFreedom += left.redundancy;
     this.#condensed = [...this.#condensed.filter((r) => !reads(r)), ...left.rows];
-    for (const state of states) this.#states[state]!.standing = "forgotten";
+    for (const state of states) {
+      const { dimension } = this.#states[state]!;
+      this.#states[state]!.standing = "forgotten";
+      this.#order -= dimension;
+      this.#blockNumbers -= dimension ** 2;
+    }
     this.#committed = this.#committed.filter((state) => !gone.has(state));
     this.#chosen = this.#chosen?.filter((state) => !gone.has(state));
     if (typeof this.#column === "number" && gone.has(this.#column)) this.#column = undefined;
@@ -421,10 +438,8 @@ export class Estimate {
     const { system, tracked } = this.#engine;
     if (wanted === this.#committed && this.#isKept(system.slots)) {
       this.#requireSure(this.#engine.trackedBound);
-      let size = 0;
-      for (const state of wanted) size += this.#states[state]!.dimension ** 2;
-      const all = target("into", into, size);
-      this.#arrange().blocksInto(all, tracked, tracked.viewBlocks());
+      const all = target("into", into, this.#blockNumbers);
+      tracked.blocksInto(all, system, wanted);
       return all;
     }
     return concatenate(this.#marginalOf(wanted.map((state) => system.slotOf(state))), into);
@@ -446,7 +461,7 @@ export class Estimate {
     const { system, tracked } = this.#engine;
     if (this.#isKept(slots.reduce((most, slot) => Math.max(most, slot + 1), 0))) {
       this.#requireSure(this.#engine.trackedBound);
-      return slots.map((slot) => tracked.block(slot));
+      return slots.map((slot) => tracked.block(system, slot));
     }
     this.#requireSure(this.#engine.baseBound);
     const blocks: Float64Array[] = [];
@@ -489,9 +504,9 @@ export class Estimate {
     const d = system.dimensionAt(slot);
     const kept = tracked.isCurrent(system, state);
     this.#requireSure(kept ? this.#engine.trackedBound : this.#engine.baseBound);
-    const arrival = this.#arrange();
-    const column = target("into", into, arrival.order * d);
-    arrival.columnInto(column, kept ? tracked.viewColumn(system, d) : wholeColumn(system, slot), d);
+    const column = target("into", into, this.#order * d);
+    if (kept) tracked.columnInto(column, system, this.#committed);
+    else this.#arrange().columnInto(column, wholeColumn(system, slot), d);
     return column;
   }
 
@@ -575,12 +590,11 @@ export class Estimate {
   varianceFactor(): { factor: number; weightedSquares: number; degreesOfFreedom: number } {
     this.#requireIdle("varianceFactor");
     let weightedSquares = this.#absorbedSquares;
-    let degreesOfFreedom = this.#absorbedFreedom;
+    let degreesOfFreedom = this.#absorbedFreedom - this.#order;
     for (const rows of [...this.#committedMeasurements().map((record) => record.rows), ...this.#condensed]) {
       for (const value of this.#whiteResidual(rows)) weightedSquares += value * value;
       degreesOfFreedom += rows.rows;
     }
-    for (const id of this.#committed) degreesOfFreedom -= this.#states[id]!.dimension;
     return { factor: degreesOfFreedom > 0 ? weightedSquares / degreesOfFreedom : Number.NaN, weightedSquares, degreesOfFreedom };
   }
 
@@ -670,7 +684,7 @@ export class Estimate {
         Math.floor((k * system.slots) / Math.min(samples, system.slots)),
       );
       eachMarginal(system, slots, (k, fresh) => {
-        const kept = tracked.block(slots[k]!);
+        const kept = tracked.block(system, slots[k]!);
         const size = Math.max(...fresh.map(Math.abs));
         for (const [at, value] of fresh.entries()) drift = Math.max(drift, Math.abs(kept[at]! - value) / size);
       });
@@ -703,7 +717,7 @@ export class Estimate {
     const { flops, nonzeros, bytes } = this.#engine.isEmpty ? { flops: 0, nonzeros: 0, bytes: 0 } : this.#engine.system.base.costs;
     return {
       states: this.#alive,
-      order: this.#committed.reduce((sum, id) => sum + this.#states[id]!.dimension, 0),
+      order: this.#order,
       measurements: this.#inForce,
       baseFlops: flops,
       baseNonzeros: nonzeros,
@@ -775,8 +789,8 @@ export class Estimate {
 
   #take(contents: EstimateContents): void {
     for (const state of contents.states) {
-      if (state.standing === "committed") this.#committed.push(this.#states.length);
       this.#states.push(state);
+      if (state.standing === "committed") this.#takeIn(this.#states.length - 1);
     }
     for (const measurement of contents.measurements) this.#measurements.push(measurement);
     this.#chosen = contents.chosen && [...contents.chosen];

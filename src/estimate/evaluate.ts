@@ -77,7 +77,7 @@ export function evaluate(
       blocks.set(distinct[k]!, distinct[k]!, block);
       values.set(distinct[k]!, value);
     });
-  } else for (const slot of distinct) blocks.set(slot, slot, tracked.block(slot));
+  } else for (const slot of distinct) blocks.set(slot, slot, tracked.block(system, slot));
   if (values.size === 0) {
     const x = solution();
     for (const slot of distinct) values.set(slot, x.subarray(system.positionOf(slot), system.positionOf(slot + 1)));
@@ -103,9 +103,8 @@ export function evaluate(
 }
 
 function takeFromColumn(system: System, tracked: Tracked, blocks: Blocks, hub: number, others: readonly number[]): void {
-  const across = system.dimensionAt(hub);
   for (const other of others) {
-    const block = tracked.columnAt(system, other, across);
+    const block = tracked.columnAt(system, other);
     blocks.set(other, hub, block);
     blocks.set(hub, other, transpose(block, system.dimensionAt(other)));
   }

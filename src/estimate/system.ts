@@ -4,6 +4,7 @@ import { status } from "../../bindings/kernel.js";
 import { kernel } from "../../bindings/loader.js";
 import { addressOrThrow, bytesAvailable, copyFloats, writeFloats } from "../../bindings/memory.js";
 import type { Base } from "./base.js";
+import { IntList } from "../support/int-list.js";
 import type { Leaf } from "./leaf.js";
 import type { WhitenedRows } from "./whitened.js";
 
@@ -32,36 +33,59 @@ export class System {
   readonly base: Base;
   /** What the base was built from. */
   readonly world: World;
-  /** Slot of each state, by state id. */
-  readonly #slotOf: number[] = [];
-  readonly #stateOf: number[] = [];
+  /** Slot of each state, by state id; −1: none. */
+  readonly #slotOf: IntList;
+  readonly #stateOf: IntList;
   /** First position of each slot, one more at the end. */
-  readonly #position: number[] = [0];
+  readonly #position: IntList;
   readonly events: SystemEvent[] = [];
   /** Measurement of each added row in the ledger. */
   readonly #owner: number[] = [];
   #scratch = 0;
   #scratchBytes = 0;
   leafNumbers = 0;
+  #newestLeaf: Leaf | undefined;
 
   /** @param world its states as they are numbered in the base's information matrix. @param sizes their dimensions. */
   constructor(base: Base, world: World, sizes: Int32Array) {
     this.base = base;
     this.world = world;
+    const slots = base.stateOfSlot.length;
+    this.#slotOf = new IntList((world.states.at(-1) ?? 0) + 65);
+    this.#stateOf = new IntList(slots + 64);
+    this.#position = new IntList(slots + 65);
+    this.#position.push(0);
     for (const place of base.stateOfSlot) this.#push(world.states[place]!, sizes[place]!);
   }
 
   #push(state: number, dimension: number): void {
-    this.#slotOf[state] = this.#stateOf.length;
+    this.#slotOf.set(state, this.#stateOf.length, -1);
     this.#stateOf.push(state);
-    this.#position.push(this.#position.at(-1)! + dimension);
+    this.#position.push(this.positions + dimension);
+  }
+
+  #pop(): void {
+    this.#stateOf.length -= 1;
+    this.#position.length -= 1;
+    this.#slotOf.set(this.#stateOf.at(this.#stateOf.length), -1, -1);
+  }
+
+  /** Slots from `from` on in the order in which their states arrived. */
+  arrivals(from: number): number[] {
+    const slots: number[] = [];
+    if (from > 0) {
+      for (let slot = from; slot < this.slots; slot += 1) slots.push(slot);
+      return slots.sort((a, b) => this.stateAt(a) - this.stateAt(b));
+    }
+    for (let state = 0; state < this.#slotOf.length; state += 1) if (this.#slotOf.at(state) >= 0) slots.push(this.#slotOf.at(state));
+    return slots;
   }
 
   get slots(): number {
     return this.#stateOf.length;
   }
   get positions(): number {
-    return this.#position.at(-1)!;
+    return this.#position.at(this.#position.length - 1);
   }
   get added(): number {
     return this.#k.ledgerAdded(this.base.ledger);
@@ -76,17 +100,21 @@ export class System {
   get flops(): number {
     return this.#k.ledgerFlops(this.base.ledger);
   }
+  /** The leaf that was added last, if any has come since the base. */
+  get newestLeaf(): Leaf | undefined {
+    return this.#newestLeaf;
+  }
   slotOf(state: number): number {
-    return this.#slotOf[state]!;
+    return this.#slotOf.at(state);
   }
   stateAt(slot: number): number {
-    return this.#stateOf[slot]!;
+    return this.#stateOf.at(slot);
   }
   positionOf(slot: number): number {
-    return this.#position[slot]!;
+    return this.#position.at(slot);
   }
   dimensionAt(slot: number): number {
-    return this.#position[slot + 1]! - this.#position[slot]!;
+    return this.#position.at(slot + 1) - this.#position.at(slot);
   }
 
   /** Kernel memory for arguments of the next call, at least `bytes` long; its contents are not kept. */
@@ -112,7 +140,7 @@ export class System {
     const parentsAt = address + 8 * (numbers.length + z.length);
     writeFloats(address, numbers);
     writeFloats(address + 8 * numbers.length, z);
-    new Int32Array(this.#k.memory.buffer, parentsAt, parents.length).set(parents.map((p) => this.#slotOf[p]!));
+    new Int32Array(this.#k.memory.buffer, parentsAt, parents.length).set(parents.map((p) => this.#slotOf.at(p)));
     this.#require(
       this.#k.addLeaf(this.base.ledger, dimension, parents.length, parentsAt, address, address + 8 * numbers.length),
       "A new state",
@@ -121,16 +149,17 @@ export class System {
     this.#push(leaf.state, dimension);
     this.leafNumbers += numbers.length;
     this.events.push({ kind: "leaf", leaf });
+    this.#newestLeaf = leaf;
   }
 
   /** Takes the newest leaves away again; they must have no row in the ledger. */
   dropLeaves(slots: number): void {
     while (this.slots > slots) {
-      delete this.#slotOf[this.#stateOf.pop()!];
-      this.#position.pop();
+      this.#pop();
       const event = this.events.pop();
       if (event?.kind === "leaf") this.leafNumbers -= event.leaf.numbers.length;
     }
+    this.#newestLeaf = undefined;
     this.#k.dropLeaves(this.base.ledger, slots);
   }
 
@@ -143,7 +172,7 @@ export class System {
       const block = blocks[k]!;
       const address = this.scratch(8 * block.length);
       writeFloats(address, block);
-      this.#k.loadBlock(this.base.ledger, from, rows, this.#slotOf[state]!, address);
+      this.#k.loadBlock(this.base.ledger, from, rows, this.#slotOf.at(state), address);
     }
   }
 
@@ -178,7 +207,7 @@ export class System {
   }
   /** Σ Aᵀ at one slot, columns × dimension: `columns` numbers for each unknown, after `back` or `backTo`. */
   columnsAt(slot: number, columns: number): Float64Array {
-    return this.#columnsFrom(this.#position[slot]!, this.dimensionAt(slot), columns);
+    return this.#columnsFrom(this.#position.at(slot), this.dimensionAt(slot), columns);
   }
 
   /** Σ Aᵀ at all positions, `columns` numbers for each, after `back`. */
@@ -268,11 +297,11 @@ export class System {
   renew(): void {
     this.base.renewLedger();
     const slots = this.base.stateOfSlot.length;
-    for (const state of this.#stateOf.splice(slots)) delete this.#slotOf[state];
-    this.#position.length = slots + 1;
+    while (this.slots > slots) this.#pop();
     this.#owner.length = 0;
     this.events.length = 0;
     this.leafNumbers = 0;
+    this.#newestLeaf = undefined;
   }
 
   free(): void {

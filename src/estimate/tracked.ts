@@ -1,5 +1,5 @@
-// Marginals kept current: all diagonal blocks of Σ by slot, and one block column of it. Brought up to date when they are read, by what
-// the rows since have changed; or computed afresh when that is cheaper or more exact.
+// Marginals kept current: all diagonal blocks of Σ, and one block column of it, in the order in which the states arrived. Brought up to date
+// when they are read, by what the rows since have changed; or computed afresh when that is cheaper or more exact.
 import { status } from "../../bindings/kernel.js";
 import { kernel } from "../../bindings/loader.js";
 import { addressOrThrow, copyFloats, writeFloats } from "../../bindings/memory.js";
@@ -7,6 +7,8 @@ import type { System } from "./system.js";
 
 /** Unit columns carried forward together for blocks of new states: their product is square in this. */
 const UNIT_COLUMNS = 24;
+/** Most unknowns of a state: so many columns may have to be held. */
+const WIDEST = 16;
 
 /** Kernel memory that grows; its contents move along. */
 class Room {
@@ -33,7 +35,7 @@ class Room {
 /** Kept numbers lose as many digits as the share of what held a state that a removal leaves is small: six here, which leaves ten. */
 const WEAK_REMOVAL = 1e-6;
 
-/** Kept numbers as they were saved. */
+/** Kept numbers as they were saved, in order of arrival. */
 export interface SavedTracked {
   readonly ratio: number;
   /** Undefined when they have to be computed afresh. */
@@ -44,6 +46,7 @@ export interface SavedTracked {
         readonly columnState: number;
         readonly blocks: Float64Array;
         readonly largest: Float64Array;
+        /** By columns, as many as the column's state has unknowns. */
         readonly column: Float64Array;
       }
     | undefined;
@@ -51,17 +54,23 @@ export interface SavedTracked {
 
 export class Tracked {
   readonly #k = kernel();
-  /** Blocks by slot, d × d each; the column, its dimension side by side for each position; its successor; largest past traces by slot. */
+  /** For each slot three i32: first f64 of its block, first row of the column, rank among the states. */
+  readonly #places = new Room();
+  /** Blocks, d × d each; largest past traces, by rank. */
   readonly #blocks = new Room();
-  #column = new Room();
-  #nextColumn = new Room();
   readonly #largest = new Room();
-  /** First f64 of each slot's block, one more at the end. */
-  readonly #blockStart: number[] = [0];
-  /** Added rows and slots that the numbers include. */
+  /** The block column by columns, `lead` apart. */
+  readonly #column = new Room();
+  #lead = 0;
+  /** Slots, f64 of all blocks and unknowns that the places cover. */
+  #slots = 0;
+  #size = 0;
+  #order = 0;
+  /** Added rows that the numbers include. */
   #rows = 0;
-  /** The state whose column is kept, −1: none at present. */
+  /** The state whose column is kept, −1: none at present, and its dimension. */
   #columnState = -1;
+  #across = 0;
   /** False: nothing here is meaningful until it is computed afresh. */
   valid = false;
   /** Largest ratio of a block's past trace to its trace now: what subtraction may have cost in digits. */
@@ -69,58 +78,94 @@ export class Tracked {
 
   /** Whether the numbers include all rows and slots. */
   isCurrent(system: System, column: number): boolean {
-    return this.valid && this.#rows === system.added && this.slots === system.slots && this.#columnState === column;
+    return this.valid && this.#rows === system.added && this.#slots === system.slots && this.#columnState === column;
   }
   get slots(): number {
-    return this.#blockStart.length - 1;
+    return this.#slots;
   }
   /** Rows that came since. */
   owed(system: System): number {
     return system.added - this.#rows;
   }
 
+  /** Forgets all places and gives each slot of a system its own. */
+  #placeAnew(system: System, slots = system.slots): void {
+    this.#slots = 0;
+    this.#size = 0;
+    this.#order = 0;
+    this.#place(system, slots);
+  }
+
+  /** Gives slots up to `slots` their places, in the order in which their states arrived. */
+  #place(system: System, slots = system.slots): void {
+    const before = this.#slots;
+    if (slots <= before) return;
+    this.#places.reserve(12 * slots, 12 * before);
+    this.#largest.reserve(8 * slots, 8 * before);
+    const arrivals = system.arrivals(before).filter((slot) => slot < slots);
+    const places = new Int32Array(this.#k.memory.buffer, this.#places.address, 3 * slots);
+    const used = this.#size;
+    let rank = before;
+    for (const slot of arrivals) {
+      const d = system.dimensionAt(slot);
+      places[3 * slot] = this.#size;
+      places[3 * slot + 1] = this.#order;
+      places[3 * slot + 2] = rank;
+      this.#size += d * d;
+      this.#order += d;
+      rank += 1;
+    }
+    this.#slots = slots;
+    this.#blocks.reserve(8 * this.#size, 8 * used);
+    new Float64Array(this.#k.memory.buffer, this.#largest.address + 8 * before, slots - before).fill(0);
+  }
+
+  /** Room for `across` columns of all unknowns; what the kept column holds moves along. */
+  #reserveColumn(across: number): void {
+    const columns = Math.max(across, this.#across);
+    if (this.#order <= this.#lead) {
+      this.#column.reserve(8 * this.#lead * columns, 8 * this.#lead * this.#across);
+      return;
+    }
+    const [old, lead] = [this.#lead, Math.ceil(1.5 * this.#order) + 64];
+    this.#column.reserve(8 * lead * Math.min(WIDEST, columns), 8 * old * this.#across);
+    const bytes = new Uint8Array(this.#k.memory.buffer, this.#column.address);
+    for (let c = this.#across - 1; c > 0; c -= 1) bytes.copyWithin(8 * c * lead, 8 * c * old, 8 * (c + 1) * old);
+    this.#lead = lead;
+  }
+
   /** Computes all blocks afresh from the selected inverse of a base without leaves and rows. */
   recompute(system: System): void {
     const k = this.#k;
     const { factor, ledger } = system.base;
-    this.valid = false;
-    this.#rows = 0;
-    this.#columnState = -1;
-    this.#blockStart.length = 1;
-    this.#reserveBlocks(system);
+    this.#begin(system);
     const inverse = addressOrThrow("The selected inverse", k.inverseBegin(factor, 1), k.inverseBytes(system.base.symbolic, 1));
     while (k.inverseAdvance(inverse, 1e18) === status.running);
-    k.blocksOfInverse(ledger, inverse, this.#blocks.address);
+    k.blocksOfInverse(ledger, inverse, this.#places.address, this.#blocks.address);
     k.inverseRelease(inverse);
-    this.#forgetPast(system);
-    this.valid = true;
+    this.#rows = 0;
+    this.#end(system);
   }
 
   /** Computes all blocks afresh by forward solves through base, leaves and ledger: where no better base can be had. */
   fromLedger(system: System): void {
-    this.valid = false;
-    this.#columnState = -1;
-    this.#blockStart.length = 1;
-    this.#reserveBlocks(system);
+    this.#begin(system);
     this.#blocksOfLeaves(system, 0);
     this.#rows = system.added;
-    this.#forgetPast(system);
+    this.#end(system);
+  }
+
+  #begin(system: System): void {
+    this.valid = false;
+    this.#columnState = -1;
+    this.#across = 0;
+    this.#placeAnew(system);
+  }
+
+  #end(system: System): void {
+    this.#k.forgetPast(system.base.ledger, this.#places.address, this.#blocks.address, this.#largest.address);
+    this.ratio = 1;
     this.valid = true;
-  }
-
-  #forgetPast(system: System): void {
-    this.#largest.reserve(8 * system.slots, 0);
-    new Float64Array(this.#k.memory.buffer, this.#largest.address, system.slots).fill(0);
-    this.ratio = this.#k.traceRatio(system.base.ledger, this.#blocks.address, this.#largest.address);
-  }
-
-  #reserveBlocks(system: System, slots = system.slots): void {
-    const used = 8 * this.#blockStart.at(-1)!;
-    const before = this.slots;
-    for (let slot = before; slot < slots; slot += 1) this.#blockStart.push(this.#blockStart.at(-1)! + system.dimensionAt(slot) ** 2);
-    this.#blocks.reserve(8 * this.#blockStart.at(-1)!, used);
-    this.#largest.reserve(8 * slots, 8 * before);
-    new Float64Array(this.#k.memory.buffer, this.#largest.address + 8 * before, slots - before).fill(0);
   }
 
   /** Brings blocks and the column of `column` (−1: none) up to date. Requires that nothing is removed in the ledger beyond what the
@@ -131,52 +176,60 @@ export class Tracked {
     const { ledger } = system.base;
     const since = this.#rows;
     const rows = system.removed === 0 ? system.added - since : 0;
-    const wasSlots = this.slots;
-    this.#reserveBlocks(system);
+    const wasSlots = this.#slots;
+    const wasOrder = this.#order;
+    this.#place(system);
     const target = column < 0 ? -1 : system.slotOf(column);
     const counted = k.countAdded(ledger, since + (system.added - since - rows));
     try {
       // New states first, as they stood before the rows that came since.
-      const followed = this.#followLeaf(system, wasSlots, target);
-      this.#blocksOfLeaves(system, followed ? wasSlots + 1 : wasSlots);
+      const across = target < 0 ? 0 : system.dimensionAt(target);
+      if (target >= 0) this.#reserveColumn(across);
+      const followed = this.#followLeaf(system, wasSlots, wasOrder, target);
       const fresh = target >= 0 && !followed && this.#columnState !== column;
-      if (!fresh && target >= 0 && !followed && wasSlots < system.slots) this.#extendColumn(system, target, wasSlots);
-      const across = fresh ? system.dimensionAt(target) : 0;
-      if (rows + across > 0) {
-        system.begin(rows + across);
-        if (across > 0) {
+      // Fresh columns of the only new state bring its block along.
+      const alone = fresh && target === wasSlots && system.slots === wasSlots + 1;
+      if (!followed && !alone) this.#blocksOfLeaves(system, wasSlots);
+      if (!fresh && target >= 0 && !followed) this.#extendColumn(system, wasSlots);
+      const loaded = fresh ? rows + across : rows;
+      if (loaded > 0) {
+        system.begin(loaded);
+        if (fresh) {
           system.loadUnits(rows, target);
           system.forward();
+          if (alone) this.#takeBlock(system, target, system.gram(loaded), loaded, rows);
         }
         if (rows > 0) {
           k.loadKept(ledger, since, rows);
           k.scaleColumns(ledger, rows);
         }
         system.back();
-        this.#apply(system, rows, 0, rows, fresh, target);
+        this.#update(system, rows, 0, fresh ? rows : -1, target);
         system.clear();
       }
       this.#columnState = column;
+      this.#across = across;
       this.#rows = counted;
     } finally {
       k.countAdded(ledger, counted);
     }
   }
 
-  /** Blocks and column after `plus` and `minus` rows that are loaded, carried forward, scaled and carried back. */
-  #apply(system: System, plus: number, minus: number, from: number, fresh: boolean, target: number): void {
-    const k = this.#k;
-    const { ledger } = system.base;
-    if (plus + minus > 0) {
-      k.updateBlocks(ledger, plus, minus, 0, system.slots, this.#blocks.address);
-      this.ratio = k.traceRatio(ledger, this.#blocks.address, this.#largest.address);
-    }
-    if (target < 0) return;
-    if (fresh) {
-      this.#column.reserve(8 * system.positions * system.dimensionAt(target), 0);
-      k.takeColumn(ledger, from, target, this.#column.address);
-    }
-    if (plus + minus > 0) k.updateColumn(ledger, plus, minus, target, this.#column.address);
+  /** Blocks and column after `plus` and `minus` rows that are loaded, carried forward, scaled and carried back; fresh: where the columns
+   *  of the target's units stand among them, −1: nowhere. */
+  #update(system: System, plus: number, minus: number, fresh: number, target: number): void {
+    this.ratio = this.#k.updateKept(
+      system.base.ledger,
+      plus,
+      minus,
+      fresh,
+      target,
+      this.#places.address,
+      this.#blocks.address,
+      this.#largest.address,
+      this.#column.address,
+      this.#lead,
+    );
   }
 
   /** A batch with removed rows, at once: the numbers must be current. Between `forward` and `settle`. False: a removed row fails. When
@@ -192,7 +245,7 @@ export class Tracked {
     }
     k.scaleColumns(ledger, plus + minus);
     system.back();
-    this.#apply(system, plus, minus, 0, false, this.#columnState < 0 ? -1 : system.slotOf(this.#columnState));
+    this.#update(system, plus, minus, -1, this.#columnState < 0 ? -1 : system.slotOf(this.#columnState));
     return true;
   }
 
@@ -202,16 +255,22 @@ export class Tracked {
   }
 
   /** One new leaf whose only parent is the state of the kept column: its block and column follow from the parent's. */
-  #followLeaf(system: System, slot: number, target: number): boolean {
+  #followLeaf(system: System, slot: number, order: number, target: number): boolean {
     if (slot + 1 !== system.slots || target !== slot || this.#columnState < 0) return false;
-    const event = system.events.findLast((e) => e.kind === "leaf");
-    if (event?.leaf.parents.length !== 1 || event.leaf.parents[0] !== this.#columnState) return false;
+    const leaf = system.newestLeaf;
+    if (leaf?.parents.length !== 1 || leaf.parents[0] !== this.#columnState) return false;
     const d = system.dimensionAt(slot);
-    const dp = system.dimensionAt(system.slotOf(this.#columnState));
-    this.#nextColumn.reserve(8 * system.positions * d, 0);
-    const scratch = system.scratch(8 * (4 * d * d + 2 * d * dp + 64));
-    this.#k.leafColumn(system.base.ledger, slot, this.#column.address, this.#nextColumn.address, this.#blockAddress(slot), scratch);
-    [this.#column, this.#nextColumn] = [this.#nextColumn, this.#column];
+    const scratch = system.scratch(8 * (3 * d * d + (d + 2) * this.#across + 16));
+    this.#k.followLeaf(
+      system.base.ledger,
+      slot,
+      this.#places.address,
+      this.#blocks.address,
+      this.#column.address,
+      this.#lead,
+      order,
+      scratch,
+    );
     return true;
   }
 
@@ -234,124 +293,131 @@ export class Tracked {
       const gram = system.gram(columns);
       system.clear();
       firsts.forEach((first, k) => {
-        const d = system.dimensionAt(slot + k);
-        const block = new Float64Array(d * d);
-        for (let j = 0; j < d; j += 1) for (let i = 0; i < d; i += 1) block[j * d + i] = gram[(first + j) * columns + first + i]!;
-        writeFloats(this.#blockAddress(slot + k), block);
+        this.#takeBlock(system, slot + k, gram, columns, first);
       });
       slot = end;
     }
   }
 
-  /** The kept column at new leaves: −R⁻¹ Σ G_p × the column at the parents. */
-  #extendColumn(system: System, target: number, from: number): void {
-    const across = system.dimensionAt(target);
-    const used = 8 * system.positionOf(from) * across;
-    this.#column.reserve(8 * system.positions * across, used);
-    const column = copyFloats(this.#column.address, system.positions * across);
-    const leaves = system.events.flatMap((event) => (event.kind === "leaf" ? [event.leaf] : []));
-    for (const leaf of leaves.slice(leaves.length - (system.slots - from))) {
-      const slot = system.slotOf(leaf.state);
-      const d = leaf.dimension;
-      const at = system.positionOf(slot);
-      for (let c = 0; c < across; c += 1) {
-        // Solve R x = −Σ G x_p, R upper: row i of R is column i of L.
-        const x = new Float64Array(d);
-        let g = d * d;
-        for (const parent of leaf.parents) {
-          const p = system.slotOf(parent);
-          for (let u = 0; u < system.dimensionAt(p); u += 1, g += d) {
-            const value = column[(system.positionOf(p) + u) * across + c]!;
-            for (let i = 0; i < d; i += 1) x[i]! -= leaf.numbers[g + i]! * value;
-          }
-        }
-        for (let i = d - 1; i >= 0; i -= 1) {
-          for (let j = i + 1; j < d; j += 1) x[i]! -= leaf.numbers[i * d + j]! * x[j]!;
-          x[i]! /= leaf.numbers[i * d + i]!;
-          column[(at + i) * across + c] = x[i]!;
-        }
-      }
-    }
-    writeFloats(this.#column.address + used, column.subarray(used / 8));
+  /** The block of one slot out of the products of unit columns, `columns` square, where its own begin at `first`. */
+  #takeBlock(system: System, slot: number, gram: Float64Array, columns: number, first: number): void {
+    const d = system.dimensionAt(slot);
+    const block = new Float64Array(this.#k.memory.buffer, this.#blockAddress(slot), d * d);
+    for (let j = 0; j < d; j += 1) for (let i = 0; i < d; i += 1) block[j * d + i] = gram[(first + j) * columns + first + i]!;
   }
 
+  /** The kept column at new leaves follows from what it holds at their parents. */
+  #extendColumn(system: System, from: number): void {
+    const scratch = system.scratch(8 * WIDEST);
+    for (let slot = from; slot < system.slots; slot += 1)
+      this.#k.extendColumn(system.base.ledger, slot, this.#across, this.#places.address, this.#column.address, this.#lead, scratch);
+  }
+
+  #placeOf(slot: number): Int32Array {
+    return new Int32Array(this.#k.memory.buffer, this.#places.address + 12 * slot, 3);
+  }
   #blockAddress(slot: number): number {
-    return this.#blocks.address + 8 * this.#blockStart[slot]!;
+    return this.#blocks.address + 8 * this.#placeOf(slot)[0]!;
   }
 
   /** The block of one slot, d × d. */
-  block(slot: number): Float64Array {
-    return copyFloats(this.#blockAddress(slot), this.#blockStart[slot + 1]! - this.#blockStart[slot]!);
+  block(system: System, slot: number): Float64Array {
+    return copyFloats(this.#blockAddress(slot), system.dimensionAt(slot) ** 2);
   }
-  /** All blocks and the column as they lie in kernel memory: good until the next kernel call. */
-  viewBlocks(): Float64Array {
-    return new Float64Array(this.#k.memory.buffer, this.#blocks.address, this.#blockStart.at(-1)!);
+  /** The kept column at one slot, row-major: its dimension × that of the column's state. */
+  columnAt(system: System, slot: number): Float64Array {
+    const row = this.#placeOf(slot)[1]!;
+    const d = system.dimensionAt(slot);
+    const part = new Float64Array(d * this.#across);
+    for (let c = 0; c < this.#across; c += 1) {
+      const from = new Float64Array(this.#k.memory.buffer, this.#column.address + 8 * (c * this.#lead + row), d);
+      for (let i = 0; i < d; i += 1) part[i * this.#across + c] = from[i]!;
+    }
+    return part;
   }
-  viewColumn(system: System, across: number): Float64Array {
-    return new Float64Array(this.#k.memory.buffer, this.#column.address, across * system.positions);
+
+  /** All blocks of `states`, which are all in order of arrival but for those forgotten since the base was built, into `target`. */
+  blocksInto(target: Float64Array, system: System, states: readonly number[]): void {
+    if (states.length === this.#slots) {
+      target.set(new Float64Array(this.#k.memory.buffer, this.#blocks.address, this.#size));
+      return;
+    }
+    let at = 0;
+    for (const state of states) {
+      const slot = system.slotOf(state);
+      const size = system.dimensionAt(slot) ** 2;
+      target.set(new Float64Array(this.#k.memory.buffer, this.#blockAddress(slot), size), at);
+      at += size;
+    }
   }
-  /** All blocks, by slot. */
-  allBlocks(): Float64Array {
-    return copyFloats(this.#blocks.address, this.#blockStart.at(-1)!);
+
+  /** The kept column at `states`, as for `blocksInto`: by columns, into `target`. */
+  columnInto(target: Float64Array, system: System, states: readonly number[]): void {
+    const order = target.length / this.#across;
+    for (let c = 0; c < this.#across; c += 1) {
+      const column = new Float64Array(this.#k.memory.buffer, this.#column.address + 8 * c * this.#lead, this.#order);
+      if (states.length === this.#slots) {
+        target.set(column, c * order);
+        continue;
+      }
+      let at = c * order;
+      for (const state of states) {
+        const slot = system.slotOf(state);
+        const row = this.#placeOf(slot)[1]!;
+        const d = system.dimensionAt(slot);
+        target.set(column.subarray(row, row + d), at);
+        at += d;
+      }
+    }
   }
-  blockStart(slot: number): number {
-    return this.#blockStart[slot]!;
-  }
-  /** The kept column at one slot, `across` numbers for each unknown. */
-  columnAt(system: System, slot: number, across: number): Float64Array {
-    return copyFloats(this.#column.address + 8 * across * system.positionOf(slot), across * system.dimensionAt(slot));
-  }
-  wholeColumn(system: System, across: number): Float64Array {
-    return copyFloats(this.#column.address, across * system.positions);
-  }
+
   get columnState(): number {
     return this.#columnState;
   }
 
-  /** Moves current numbers from one system to another that has the same states and information. */
+  /** Moves current numbers from one system to another that has the same information, and the same states but for forgotten ones. */
   carryOver(from: System, to: System): void {
     if (!this.valid) return;
-    const blocks = this.allBlocks();
-    const largest = copyFloats(this.#largest.address, from.slots);
-    const starts = this.#blockStart.slice();
-    const across = this.#columnState < 0 ? 0 : from.dimensionAt(from.slotOf(this.#columnState));
-    const column = across ? this.wholeColumn(from, across) : new Float64Array(0);
-    this.#blockStart.length = 1;
-    this.#reserveBlocks(to);
-    const moved = new Float64Array(blocks.length);
-    const movedLargest = new Float64Array(to.slots);
-    const movedColumn = new Float64Array(column.length);
-    for (let slot = 0; slot < to.slots; slot += 1) {
-      const old = from.slotOf(to.stateAt(slot));
-      moved.set(blocks.subarray(starts[old]!, starts[old + 1]!), this.#blockStart[slot]!);
-      movedLargest[slot] = largest[old]!;
-      if (across > 0) {
-        const at = from.positionOf(old) * across;
-        movedColumn.set(column.subarray(at, at + from.dimensionAt(old) * across), to.positionOf(slot) * across);
-      }
-    }
-    writeFloats(this.#blocks.address, moved);
-    writeFloats(this.#largest.address, movedLargest);
-    if (across > 0) {
-      this.#column.reserve(8 * movedColumn.length, 0);
-      writeFloats(this.#column.address, movedColumn);
-    }
+    if (to.slots !== from.slots) this.#leaveOut(from, to);
+    else this.#placeAnew(to);
     this.#rows = to.added;
   }
 
+  /** Keeps the numbers of those states that `to` still has. */
+  #leaveOut(from: System, to: System): void {
+    const states = to.arrivals(0).map((slot) => to.stateAt(slot));
+    const traces = states.map((state) => new Float64Array(this.#k.memory.buffer, this.#largest.address)[this.#placeOf(from.slotOf(state))[2]!]!);
+    const blocks = new Float64Array(states.reduce((sum, state) => sum + to.dimensionAt(to.slotOf(state)) ** 2, 0));
+    this.blocksInto(blocks, from, states);
+    const column = new Float64Array(this.#across * to.positions);
+    this.columnInto(column, from, states);
+    this.#placeAnew(to);
+    writeFloats(this.#blocks.address, blocks);
+    writeFloats(this.#largest.address, traces);
+    this.#writeColumn(column);
+  }
+
+  #writeColumn(column: Float64Array): void {
+    const order = column.length / this.#across;
+    for (let c = 0; c < this.#across; c += 1)
+      writeFloats(this.#column.address + 8 * c * this.#lead, column.subarray(c * order, (c + 1) * order));
+  }
+
   /** All numbers, to be brought back by `restore`: up to date or not. */
-  save(system: System): SavedTracked {
+  save(): SavedTracked {
     if (!this.valid) return { ratio: this.ratio, numbers: undefined };
-    const across = this.#columnState < 0 ? 0 : system.dimensionAt(system.slotOf(this.#columnState));
+    const column = new Float64Array(this.#across * this.#order);
+    for (let c = 0; c < this.#across; c += 1)
+      column.set(copyFloats(this.#column.address + 8 * c * this.#lead, this.#order), c * this.#order);
     return {
       ratio: this.ratio,
       numbers: {
-        slots: this.slots,
+        slots: this.#slots,
         rows: this.#rows,
         columnState: this.#columnState,
-        blocks: this.allBlocks(),
-        largest: copyFloats(this.#largest.address, this.slots),
-        column: copyFloats(this.#column.address, across * system.positionOf(this.slots)),
+        blocks: copyFloats(this.#blocks.address, this.#size),
+        largest: copyFloats(this.#largest.address, this.#slots),
+        column,
       },
     };
   }
@@ -362,22 +428,26 @@ export class Tracked {
     this.valid = false;
     if (!numbers) return;
     const { slots, rows, columnState, blocks, largest, column } = numbers;
-    this.#blockStart.length = 1;
-    this.#reserveBlocks(system, slots);
+    this.#placeAnew(system, slots);
     writeFloats(this.#blocks.address, blocks);
     writeFloats(this.#largest.address, largest);
-    this.#column.reserve(8 * column.length, 0);
-    writeFloats(this.#column.address, column);
+    this.#across = columnState < 0 ? 0 : system.dimensionAt(system.slotOf(columnState));
+    if (this.#across > 0) {
+      this.#reserveColumn(this.#across);
+      this.#writeColumn(column);
+    }
     this.#columnState = columnState;
     this.#rows = rows;
     this.valid = true;
   }
 
   free(): void {
+    this.#places.free();
     this.#blocks.free();
     this.#column.free();
-    this.#nextColumn.free();
     this.#largest.free();
+    this.#lead = 0;
+    this.#across = 0;
     this.valid = false;
   }
 }

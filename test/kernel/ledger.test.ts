@@ -160,12 +160,18 @@ test("base, leaves and ledger answer like a dense matrix after any sequence of a
           );
         }).flat();
       const columnOf = (sigma: Matrix, slot: number) =>
-        Array.from({ length: twin.positions.at(-1)! }, (_, p) =>
-          Array.from({ length: twin.dimensionOf(slot) }, (_, j) => sigma.get(p, twin.positions[slot]! + j)),
+        Array.from({ length: twin.dimensionOf(slot) }, (_, j) =>
+          Array.from({ length: twin.positions.at(-1)! }, (_, p) => sigma.get(p, twin.positions[slot]! + j)),
         ).flat();
       let blocks: Float64Array = Float64Array.from(blocksOf(covariance));
       let newest = twin.slots - 1;
       let column: Float64Array = Float64Array.from(columnOf(covariance, newest));
+      /** Slots in the order in which they came: their own. */
+      const places = () => {
+        const table = new Int32Array(3 * twin.slots);
+        for (let s = 0, block = 0; s < twin.slots; block += twin.dimensionOf(s) ** 2, s += 1) table.set([block, twin.positions[s]!, s], 3 * s);
+        return twin.keep(table);
+      };
 
       for (const step of steps) {
         if (step === "leaf") {
@@ -175,20 +181,35 @@ test("base, leaves and ledger answer like a dense matrix after any sequence of a
           twin.addLeaf(d, parents);
           const slot = twin.slots - 1;
           const n = twin.positions.at(-1)!;
-          const next = twin.keep(new Float64Array(n * d));
-          const block = twin.keep(new Float64Array(d * d));
+          const across = twin.dimensionOf(newest);
+          const before = n - d;
+          const lead = n + 3; // more than the rows, as when there is room for more
+          const kept = new Float64Array(lead * Math.max(d, across));
+          for (let j = 0; j < across; j += 1) kept.set(column.subarray(j * before, (j + 1) * before), j * lead);
+          const next = twin.keep(kept);
+          const grown = twin.keep(new Float64Array([...blocks, ...new Float64Array(d * d)]));
+          const largest = twin.keep(new Float64Array(twin.slots));
           if (single) {
-            raw.leafColumn!(ledger, slot, twin.keep(column), next, block, twin.keep(new Float64Array(64)));
+            raw.followLeaf!(ledger, slot, places(), grown, next, lead, before, twin.keep(new Float64Array(64)));
           } else {
+            // The column of the state before goes on to the new one, too.
+            raw.extendColumn!(ledger, slot, across, places(), next, lead, twin.keep(new Float64Array(16)));
+            const extended = floatsAt(kernel, next, kept.length);
+            const expected = columnOf(twin.truth().covariance, newest);
+            const size = Math.max(...expected.map(Math.abs));
+            for (let j = 0; j < across; j += 1)
+              for (let p = before; p < n; p += 1)
+                expect(Math.abs(extended[j * lead + p]! - expected[j * n + p]!)).toBeLessThanOrEqual(TOLERANCE * size);
             twin.load([], [slot]);
             raw.carryForward!(ledger);
-            new Float64Array(memory.buffer, block, d * d).set(floatsAt(kernel, raw.ledgerGram!(ledger), d * d));
+            new Float64Array(memory.buffer, grown + 8 * blocks.length, d * d).set(floatsAt(kernel, raw.ledgerGram!(ledger), d * d));
             raw.carryBack!(ledger);
-            raw.takeColumn!(ledger, 0, slot, next);
+            raw.updateKept!(ledger, 0, 0, 0, slot, places(), grown, largest, next, lead);
             raw.clearColumns!(ledger);
           }
-          column = floatsAt(kernel, next, n * d);
-          blocks = Float64Array.from([...blocks, ...floatsAt(kernel, block, d * d)]);
+          const made = floatsAt(kernel, next, kept.length);
+          column = Float64Array.from(Array.from({ length: d }, (_, j) => [...made.subarray(j * lead, j * lead + n)]).flat());
+          blocks = floatsAt(kernel, grown, blocks.length + d * d);
           ({ covariance, estimate } = twin.truth());
           newest = slot;
         } else if (step === "drop") {
@@ -221,14 +242,32 @@ test("base, leaves and ledger answer like a dense matrix after any sequence of a
       }
       twin.release();
 
+      function blocksFrom(slot: number): number {
+        let at = 0;
+        for (let s = 0; s < slot; s += 1) at += twin.dimensionOf(s) ** 2;
+        return at;
+      }
+
       function updateTracked(plus: number, minus: number): void {
         const rows = plus + minus;
         expect(raw.factorInnovation!(ledger, plus, minus)).toBe(0);
         raw.scaleColumns!(ledger, rows);
         raw.carryBack!(ledger);
         const [b, c] = [twin.keep(blocks), twin.keep(column)];
-        raw.updateBlocks!(ledger, plus, minus, 0, twin.slots, b);
-        raw.updateColumn!(ledger, plus, minus, newest, c);
+        const traces = Array.from({ length: twin.slots }, (_, s) => {
+          const at = blocksFrom(s);
+          const d = twin.dimensionOf(s);
+          return Array.from({ length: d }, (_unused, k) => blocks[at + k * (d + 1)]!).reduce((sum, v) => sum + v, 0);
+        });
+        const largest = twin.keep(Float64Array.from(traces));
+        const ratio = raw.updateKept!(ledger, plus, minus, -1, newest, places(), b, largest, c, twin.positions.at(-1)!);
+        const now = floatsAt(kernel, b, blocks.length);
+        const ratios = traces.map((past, s) => {
+          const at = blocksFrom(s);
+          const d = twin.dimensionOf(s);
+          return past / Array.from({ length: d }, (_unused, k) => now[at + k * (d + 1)]!).reduce((sum, v) => sum + v, 0);
+        });
+        expect(ratio / Math.max(1, ...ratios)).toBeCloseTo(1, 12);
         raw.clearColumns!(ledger);
         blocks = floatsAt(kernel, b, blocks.length);
         column = floatsAt(kernel, c, column.length);
