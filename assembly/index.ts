@@ -38,7 +38,7 @@ export {
 } from "./ledger/columns";
 export { enterRows, settleRows, withdrawEntered, dropRow } from "./ledger/rows";
 export {
-  factorInnovation, scaleColumns, updateKept, followLeaf, extendColumn, blocksOfInverse, forgetPast,
+  factorInnovation, scaleColumns, updateKept, takeColumn, followLeaf, extendColumn, blocksOfInverse, forgetPast,
 } from "./ledger/tracked";
 export {
   ledgerX, ledgerGram, ledgerAdded, ledgerRemoved, ledgerBytes, ledgerFlops, ledgerLogDeterminant, strongestRow, ledgerLoss, weakestInnovation,

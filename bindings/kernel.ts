@@ -101,12 +101,13 @@ export interface KernelExports {
     minus: number,
     fresh: number,
     target: number,
-    places: number,
+    arrivals: number,
     blocks: number,
     largest: number,
     column: number,
     lead: number,
   ): number;
+  takeColumn(ledger: number, from: number, target: number, arrivals: number, column: number, lead: number): void;
   followLeaf(
     ledger: number,
     slot: number,
@@ -119,7 +120,7 @@ export interface KernelExports {
   ): void;
   extendColumn(ledger: number, slot: number, across: number, places: number, column: number, lead: number, scratch: number): void;
   blocksOfInverse(ledger: number, inverse: number, places: number, blocks: number): void;
-  forgetPast(ledger: number, places: number, blocks: number, largest: number): void;
+  forgetPast(ledger: number, arrivals: number, blocks: number, largest: number): void;
 }
 
 /** What kernel calls return; a positive number is 1 + the offending unknown. The same as assembly/memory/status.ts. */

@@ -2,8 +2,8 @@
  *  With W = Σ Aᵀ before the batch and its signed factor  C + A Σ Aᵀ = K J Kᵀ,  B = W K⁻ᵀ:
  *      Σᵢⱼ' = Σᵢⱼ − Bᵢ J Bⱼᵀ.
  *  Kept numbers lie in the order in which the states arrived, whatever base they were computed on, so that reading them is a copy and a new
- *  base moves nothing: blocks one after another, each d × d; the block column by columns, `lead` numbers from one to the next. The table
- *  `places` holds three i32 a slot: first f64 of its block, first row of the block column, rank among the states.
+ *  base moves nothing: blocks one after another, each d × d; the block column by columns, `lead` numbers from one to the next. Two tables
+ *  say where: `places` holds two i32 a slot, first f64 of its block and first row of the block column; `arrivals` the slots in that order.
  *  Source: Woodbury (1950); the additive form of the covariance update in sequential least squares (Plackett 1950). */
 import { atF64, f64At, i32At, setF64, u32At } from "../memory/access";
 import { factorPanel } from "../dense/factor-panel";
@@ -62,18 +62,17 @@ export function scaleColumns(l: Ledger, rows: i32): void {
 }
 
 // @ts-ignore: decorator
-@inline function blockPlace(places: usize, slot: i32): i32 { return load<i32>(places + <usize>(12 * slot)); }
+@inline function blockPlace(places: usize, slot: i32): i32 { return load<i32>(places + (<usize>slot << 3)); }
 // @ts-ignore: decorator
-@inline function rowPlace(places: usize, slot: i32): i32 { return load<i32>(places + <usize>(12 * slot), 4); }
-// @ts-ignore: decorator
-@inline function rankPlace(places: usize, slot: i32): i32 { return load<i32>(places + <usize>(12 * slot), 8); }
+@inline function rowPlace(places: usize, slot: i32): i32 { return load<i32>(places + (<usize>slot << 3), 4); }
 
 /** blocks := blocks − B J Bᵀ for all slots, and column := column − B J Bₜᵀ with Bₜ the rows of B at slot `target` (−1: no column), after
  *  carryBack. fresh ≥ 0: the column is first taken from the worked-on columns fresh, fresh + 1 …, which were carried back from the
  *  target's units by what counted before the batch.
- *  largest f64 by rank: the largest trace that a block has had; kept.  Returns the largest ratio of such a trace to the trace now. */
+ *  largest f64 by arrival: the largest trace that a block has had; kept.  Returns the largest ratio of such a trace to the trace now.
+ *  States are walked as they arrived: reads of B are scattered then, and writes are not. */
 export function updateKept(
-  l: Ledger, plus: i32, minus: i32, fresh: i32, target: i32, places: usize, blocks: usize, largest: usize, column: usize, lead: i32,
+  l: Ledger, plus: i32, minus: i32, fresh: i32, target: i32, arrivals: usize, block: usize, largest: usize, column: usize, lead: i32,
 ): f64 {
   const side = l.side, rows = plus + minus, turned = l.buffer, across = target < 0 ? 0 : slotDimension(l, target);
   for (let j = 0; j < across; ++j) {
@@ -82,27 +81,41 @@ export function updateKept(
   }
   const step = <usize>side << 3, stride = <usize>lead << 3;
   let ratio: f64 = 1;
-  for (let slot = 0; slot < l.slots; ++slot) {
-    const d = slotDimension(l, slot), b = atF64(l.x, i32At(l.slotPosition, slot) * side);
-    const block = atF64(blocks, blockPlace(places, slot)), into = atF64(column, rowPlace(places, slot));
+  for (let rank = 0; rank < l.slots; ++rank, largest += 8) {
+    const slot = i32At(arrivals, rank), d = slotDimension(l, slot), b = atF64(l.x, i32At(l.slotPosition, slot) * side);
     let trace: f64;
-    if (d == 1) trace = updateSlot<One>(1, b, step, plus, rows, fresh, across, turned, block, into, stride);
-    else if (d == 2) trace = updateSlot<Two>(2, b, step, plus, rows, fresh, across, turned, block, into, stride);
-    else if (d == 3) trace = updateSlot<Three>(3, b, step, plus, rows, fresh, across, turned, block, into, stride);
-    else trace = updateSlot<Many>(d, b, step, plus, rows, fresh, across, turned, block, into, stride);
-    const at = atF64(largest, rankPlace(places, slot)), past = load<f64>(at);
-    if (!(past >= trace)) store<f64>(at, trace);
+    if (d == 1) trace = updateState<One>(1, b, step, plus, rows, fresh, across, turned, block, column, stride);
+    else if (d == 2) trace = updateState<Two>(2, b, step, plus, rows, fresh, across, turned, block, column, stride);
+    else if (d == 3) trace = updateState<Three>(3, b, step, plus, rows, fresh, across, turned, block, column, stride);
+    else trace = updateState<Many>(d, b, step, plus, rows, fresh, across, turned, block, column, stride);
+    const past = load<f64>(largest);
+    if (!(past >= trace)) store<f64>(largest, trace);
     else if (!(past <= ratio * trace)) ratio = trace > 0 ? past / trace : Infinity;
+    block += <usize>(d * d) << 3;
+    column += <usize>d << 3;
   }
   return ratio;
 }
 
+/** column := the worked-on columns from, from + 1 … as they were carried back from the units of slot `target`. */
+export function takeColumn(l: Ledger, from: i32, target: i32, arrivals: usize, column: usize, lead: i32): void {
+  const side = <usize>l.side << 3, across = slotDimension(l, target), stride = <usize>lead << 3;
+  for (let rank = 0; rank < l.slots; ++rank) {
+    const slot = i32At(arrivals, rank);
+    let b = l.x + <usize>i32At(l.slotPosition, slot) * side + (<usize>from << 3);
+    for (let i = slotDimension(l, slot); i > 0; --i, b += side, column += 8) {
+      let at = b, into = column;
+      for (let c = across; c > 0; --c, at += 8, into += stride) store<f64>(into, load<f64>(at));
+    }
+  }
+}
+
 type Many = i64;
 
-/** One slot of updateKept; its trace afterwards. Dimensions up to three have their loops unrolled: they are nearly all. */
+/** One state of updateKept; its trace afterwards. Dimensions up to three have their loops unrolled: they are nearly all. */
 // @ts-ignore: decorator
 @inline
-function updateSlot<D>(
+function updateState<D>(
   d: i32, b: usize, step: usize, plus: i32, rows: i32, fresh: i32, across: i32, turned: usize, block: usize, into: usize, stride: usize,
 ): f64 {
   let trace: f64 = 0;
@@ -265,12 +278,13 @@ export function blocksOfInverse(l: Ledger, z: SelectedInverse, places: usize, bl
   }
 }
 
-/** The largest trace of each block, by rank, is its trace now. */
-export function forgetPast(l: Ledger, places: usize, blocks: usize, largest: usize): void {
-  for (let slot = 0; slot < l.slots; ++slot) {
-    const d = slotDimension(l, slot), block = atF64(blocks, blockPlace(places, slot));
+/** The largest trace of each block, by arrival, is its trace now. */
+export function forgetPast(l: Ledger, arrivals: usize, block: usize, largest: usize): void {
+  for (let rank = 0; rank < l.slots; ++rank, largest += 8) {
+    const d = slotDimension(l, i32At(arrivals, rank));
     let trace: f64 = 0;
     for (let j = 0; j < d; ++j) trace += f64At(block, j * (d + 1));
-    setF64(largest, rankPlace(places, slot), trace);
+    store<f64>(largest, trace);
+    block += <usize>(d * d) << 3;
   }
 }

@@ -47,8 +47,12 @@ function backwardStrip<WIDTH, PAIRS>(below: i32, a: usize, aCol: usize, g: usize
   if (sizeof<WIDTH>() >= sizeof<Four>()) { r2 = reciprocal(a + a2 + 16); r3 = reciprocal(a + a3 + 24); }
   let s00 = zero, s01 = zero, s02 = zero, s03 = zero, s10 = zero, s11 = zero, s12 = zero, s13 = zero;
   let s20 = zero, s21 = zero, s30 = zero, s31 = zero;
-  let p = a + 8 * wide, x = g + wide * side;
-  for (const end = p + (<usize>below << 3); p != end; p += 8, x += side) {
+  // From the last row up: the rows solved just before come last, while their numbers are still on the way.
+  const end = a + 8 * wide;
+  let p = end + (<usize>below << 3), x = g + (wide + <usize>below) * side;
+  while (p != end) {
+    p -= 8;
+    x -= side;
     const x0 = v128.load(x);
     let x1 = x0, x2 = x0, x3 = x0;
     if (sizeof<PAIRS>() >= sizeof<Two>()) x1 = v128.load(x, 16);

@@ -97,14 +97,14 @@ export class Own {
   }
 }
 
-/** For each slot where its state's block lies in order of arrival, its first unknown, and its number. */
+/** For each slot where its state's block lies in order of arrival, and its first unknown. */
 function placesOf(dimensions: Int32Array, stateOfSlot: Int32Array): Int32Array {
   const [block, row] = [new Int32Array(dimensions.length + 1), new Int32Array(dimensions.length + 1)];
   for (const [state, d] of dimensions.entries()) {
     block[state + 1] = block[state]! + d * d;
     row[state + 1] = row[state]! + d;
   }
-  const places = new Int32Array(3 * stateOfSlot.length);
-  for (const [slot, state] of stateOfSlot.entries()) places.set([block[state]!, row[state]!, state], 3 * slot);
+  const places = new Int32Array(2 * stateOfSlot.length);
+  for (const [slot, state] of stateOfSlot.entries()) places.set([block[state]!, row[state]!], 2 * slot);
   return places;
 }

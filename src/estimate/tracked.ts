@@ -54,9 +54,10 @@ export interface SavedTracked {
 
 export class Tracked {
   readonly #k = kernel();
-  /** For each slot three i32: first f64 of its block, first row of the column, rank among the states. */
+  /** For each slot two i32: first f64 of its block, first row of the column. And the slots in order of arrival. */
   readonly #places = new Room();
-  /** Blocks, d × d each; largest past traces, by rank. */
+  readonly #arrivals = new Room();
+  /** Blocks, d × d each; largest past traces. */
   readonly #blocks = new Room();
   readonly #largest = new Room();
   /** The block column by columns, `lead` apart. */
@@ -100,20 +101,19 @@ export class Tracked {
   #place(system: System, slots = system.slots): void {
     const before = this.#slots;
     if (slots <= before) return;
-    this.#places.reserve(12 * slots, 12 * before);
+    this.#places.reserve(8 * slots, 8 * before);
+    this.#arrivals.reserve(4 * slots, 4 * before);
     this.#largest.reserve(8 * slots, 8 * before);
     const arrivals = system.arrivals(before).filter((slot) => slot < slots);
-    const places = new Int32Array(this.#k.memory.buffer, this.#places.address, 3 * slots);
+    const places = new Int32Array(this.#k.memory.buffer, this.#places.address, 2 * slots);
+    new Int32Array(this.#k.memory.buffer, this.#arrivals.address + 4 * before, slots - before).set(arrivals);
     const used = this.#size;
-    let rank = before;
     for (const slot of arrivals) {
       const d = system.dimensionAt(slot);
-      places[3 * slot] = this.#size;
-      places[3 * slot + 1] = this.#order;
-      places[3 * slot + 2] = rank;
+      places[2 * slot] = this.#size;
+      places[2 * slot + 1] = this.#order;
       this.#size += d * d;
       this.#order += d;
-      rank += 1;
     }
     this.#slots = slots;
     this.#blocks.reserve(8 * this.#size, 8 * used);
@@ -163,7 +163,7 @@ export class Tracked {
   }
 
   #end(system: System): void {
-    this.#k.forgetPast(system.base.ledger, this.#places.address, this.#blocks.address, this.#largest.address);
+    this.#k.forgetPast(system.base.ledger, this.#arrivals.address, this.#blocks.address, this.#largest.address);
     this.ratio = 1;
     this.valid = true;
   }
@@ -204,7 +204,8 @@ export class Tracked {
           k.scaleColumns(ledger, rows);
         }
         system.back();
-        this.#update(system, rows, 0, fresh ? rows : -1, target);
+        if (rows > 0) this.#update(system, rows, 0, fresh ? rows : -1, target);
+        else k.takeColumn(ledger, 0, target, this.#arrivals.address, this.#column.address, this.#lead);
         system.clear();
       }
       this.#columnState = column;
@@ -224,7 +225,7 @@ export class Tracked {
       minus,
       fresh,
       target,
-      this.#places.address,
+      this.#arrivals.address,
       this.#blocks.address,
       this.#largest.address,
       this.#column.address,
@@ -314,7 +315,7 @@ export class Tracked {
   }
 
   #placeOf(slot: number): Int32Array {
-    return new Int32Array(this.#k.memory.buffer, this.#places.address + 12 * slot, 3);
+    return new Int32Array(this.#k.memory.buffer, this.#places.address + 8 * slot, 2);
   }
   #blockAddress(slot: number): number {
     return this.#blocks.address + 8 * this.#placeOf(slot)[0]!;
@@ -386,7 +387,9 @@ export class Tracked {
   /** Keeps the numbers of those states that `to` still has. */
   #leaveOut(from: System, to: System): void {
     const states = to.arrivals(0).map((slot) => to.stateAt(slot));
-    const traces = states.map((state) => new Float64Array(this.#k.memory.buffer, this.#largest.address)[this.#placeOf(from.slotOf(state))[2]!]!);
+    const past = new Map(from.arrivals(0).map((slot, rank) => [from.stateAt(slot), rank]));
+    const largest = copyFloats(this.#largest.address, from.slots);
+    const traces = states.map((state) => largest[past.get(state)!]!);
     const blocks = new Float64Array(states.reduce((sum, state) => sum + to.dimensionAt(to.slotOf(state)) ** 2, 0));
     this.blocksInto(blocks, from, states);
     const column = new Float64Array(this.#across * to.positions);
@@ -443,6 +446,7 @@ export class Tracked {
 
   free(): void {
     this.#places.free();
+    this.#arrivals.free();
     this.#blocks.free();
     this.#column.free();
     this.#largest.free();

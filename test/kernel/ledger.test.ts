@@ -168,10 +168,11 @@ test("base, leaves and ledger answer like a dense matrix after any sequence of a
       let column: Float64Array = Float64Array.from(columnOf(covariance, newest));
       /** Slots in the order in which they came: their own. */
       const places = () => {
-        const table = new Int32Array(3 * twin.slots);
-        for (let s = 0, block = 0; s < twin.slots; block += twin.dimensionOf(s) ** 2, s += 1) table.set([block, twin.positions[s]!, s], 3 * s);
+        const table = new Int32Array(2 * twin.slots);
+        for (let s = 0, block = 0; s < twin.slots; block += twin.dimensionOf(s) ** 2, s += 1) table.set([block, twin.positions[s]!], 2 * s);
         return twin.keep(table);
       };
+      const arrivals = () => twin.keep(Int32Array.from({ length: twin.slots }, (_, s) => s));
 
       for (const step of steps) {
         if (step === "leaf") {
@@ -188,7 +189,6 @@ test("base, leaves and ledger answer like a dense matrix after any sequence of a
           for (let j = 0; j < across; j += 1) kept.set(column.subarray(j * before, (j + 1) * before), j * lead);
           const next = twin.keep(kept);
           const grown = twin.keep(new Float64Array([...blocks, ...new Float64Array(d * d)]));
-          const largest = twin.keep(new Float64Array(twin.slots));
           if (single) {
             raw.followLeaf!(ledger, slot, places(), grown, next, lead, before, twin.keep(new Float64Array(64)));
           } else {
@@ -204,7 +204,7 @@ test("base, leaves and ledger answer like a dense matrix after any sequence of a
             raw.carryForward!(ledger);
             new Float64Array(memory.buffer, grown + 8 * blocks.length, d * d).set(floatsAt(kernel, raw.ledgerGram!(ledger), d * d));
             raw.carryBack!(ledger);
-            raw.updateKept!(ledger, 0, 0, 0, slot, places(), grown, largest, next, lead);
+            raw.takeColumn!(ledger, 0, slot, arrivals(), next, lead);
             raw.clearColumns!(ledger);
           }
           const made = floatsAt(kernel, next, kept.length);
@@ -260,7 +260,7 @@ test("base, leaves and ledger answer like a dense matrix after any sequence of a
           return Array.from({ length: d }, (_unused, k) => blocks[at + k * (d + 1)]!).reduce((sum, v) => sum + v, 0);
         });
         const largest = twin.keep(Float64Array.from(traces));
-        const ratio = raw.updateKept!(ledger, plus, minus, -1, newest, places(), b, largest, c, twin.positions.at(-1)!);
+        const ratio = raw.updateKept!(ledger, plus, minus, -1, newest, arrivals(), b, largest, c, twin.positions.at(-1)!);
         const now = floatsAt(kernel, b, blocks.length);
         const ratios = traces.map((past, s) => {
           const at = blocksFrom(s);
