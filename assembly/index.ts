@@ -19,6 +19,11 @@ export { solveLower, solveLowerMany, solveLowerTransposed, solveLowerTransposedM
 export { inverseOfProduct, inverseScratch } from "./dense/inverse-of-product";
 export { axpy, dot, subtractProduct, subtractTransposedProduct } from "./dense/vector";
 export { mirror, transposeInto } from "./dense/transpose";
+export {
+  assemblyBegin, assemblyAdvance, assemblyProgress, assemblyRelease, assemblyOrder, assemblyColumnStart, assemblyRowIndex, assemblyValues,
+  assemblyVector, assemblyStateOf,
+} from "./information/assemble";
+export { orderStates, orderVector, orderDiagonal } from "./information/slots";
 export { analysisBegin, analysisAdvance, analysisProgress, analysisFinish, analysisFactorBytes, analysisRelease } from "./symbolic/analysis";
 export { releaseSymbolic as symbolicRelease } from "./symbolic/symbolic";
 export {
@@ -30,7 +35,7 @@ export { inverseEntries } from "./solve/entries";
 export { inverseBegin, inverseAdvance, inverseProgress, inverseRelease, inverseDiagonal } from "./inverse/selected-inverse";
 export { inverseOnMatrix, inverseOnFactor, inverseFactorColumns, factorEntries } from "./inverse/pattern";
 export { reciprocalCondition } from "./condition";
-export { ledgerCreate, ledgerRelease } from "./ledger/ledger";
+export { ledgerCreate, ledgerRenew, ledgerRelease } from "./ledger/ledger";
 export { addLeaf, dropLeaves } from "./ledger/leaves";
 export {
   beginColumns, setRight, loadBlock, loadUnits, carryForward, columnValues, carryBack, carryBackTo, clearColumns, loadKept,
@@ -41,6 +46,6 @@ export {
   factorInnovation, scaleColumns, updateKept, takeColumn, followLeaf, extendColumn, blocksOfInverse, forgetPast,
 } from "./ledger/tracked";
 export {
-  ledgerX, ledgerGram, ledgerAdded, ledgerRemoved, ledgerBytes, ledgerFlops, ledgerLogDeterminant, strongestRow, ledgerLoss, weakestInnovation,
+  ledgerX, ledgerGram, ledgerAdded, ledgerRemoved, ledgerEntries, ledgerBytes, ledgerFlops, ledgerLogDeterminant, strongestRow, ledgerLoss, weakestInnovation,
 } from "./ledger/facts";
 export { householderScratch, triangularize } from "./dense/householder";

@@ -14,6 +14,28 @@ export interface KernelExports {
   memoryPeak(): number;
   memoryCapacity(): number;
 
+  assemblyBegin(
+    states: number,
+    sizes: number,
+    measurements: number,
+    readStart: number,
+    reads: number,
+    rows: number,
+    numbers: number,
+  ): number;
+  assemblyAdvance(job: number, budget: number): number;
+  assemblyProgress(job: number): number;
+  assemblyRelease(job: number): void;
+  assemblyOrder(job: number): number;
+  assemblyColumnStart(job: number): number;
+  assemblyRowIndex(job: number): number;
+  assemblyValues(job: number): number;
+  assemblyVector(job: number): number;
+  assemblyStateOf(job: number): number;
+  orderStates(symbolic: number, stateOf: number, sizes: number, stateOfSlot: number, dimensions: number): void;
+  orderVector(symbolic: number, x: number, y: number): void;
+  orderDiagonal(symbolic: number, columnStart: number, values: number, y: number): void;
+
   analysisBegin(
     order: number,
     columnStart: number,
@@ -65,11 +87,13 @@ export interface KernelExports {
 
   symbolicOrder(symbolic: number): number;
   ledgerCreate(factor: number, slots: number, dimensions: number): number;
+  ledgerRenew(ledger: number): void;
   ledgerRelease(ledger: number): void;
   ledgerX(ledger: number): number;
   ledgerGram(ledger: number): number;
   ledgerAdded(ledger: number): number;
   ledgerRemoved(ledger: number): number;
+  ledgerEntries(ledger: number): number;
   ledgerBytes(ledger: number): number;
   ledgerFlops(ledger: number): number;
   ledgerLogDeterminant(ledger: number): number;

@@ -47,6 +47,27 @@ async function runInSlices(call: SlicedCall, { signal, onProgress }: SliceOption
  *  blocks, which run too when it is dropped halfway. */
 export type Steps<T> = Generator<SlicedCall, T, number>;
 
+/** Steps that are the part `from` … `to` of a larger whole: their progress is scaled. */
+export function* part<T>(steps: Steps<T>, from: number, to: number): Steps<T> {
+  try {
+    let step = steps.next(status.ok);
+    while (!step.done) {
+      const call = step.value;
+      step = steps.next(
+        yield {
+          advance: (budget) => call.advance(budget),
+          progress: () => call.progress(),
+          from: from + (to - from) * (call.from ?? 0),
+          to: from + (to - from) * (call.to ?? 1),
+        },
+      );
+    }
+    return step.value;
+  } finally {
+    steps.return(undefined as never);
+  }
+}
+
 /** Runs all steps to the end at once. */
 export function runSteps<T>(steps: Steps<T>): T {
   try {

@@ -243,6 +243,7 @@ function keepChunk(l: Ledger, x: usize, width: i32, node: i32): void {
     for (let u = 0; u < width; ++u) setF64(numbers, u * room + count + q, f64At(x, u * k + chunkFrom + q));
   }
   store<i32>(chunk, count + chunkRows, 4);
+  l.chunkEntries += <f64>chunkRows * <f64>width;
 }
 
 /** Takes ledger row `id` out of all chunks; later rows of the same sign move up by one. */
@@ -260,6 +261,7 @@ export function forgetColumn(l: Ledger, id: i32): void {
         const numbers = chunkNumbers(chunk), width = nodeWidth(l, node);
         for (let u = 0; u < width; ++u) setF64(numbers, u * room + q, f64At(numbers, u * room + count));
         store<i32>(chunk, count, 4);
+        l.chunkEntries -= <f64>width;
         --q;
       } else if (id >= 0 ? other > id : other < id) setI32(ids, q, other + (id >= 0 ? -1 : 1));
     }
@@ -275,6 +277,7 @@ export function trimColumns(l: Ledger, added: i32, removed: i32): void {
       const id = i32At(ids, count - 1);
       if (id >= 0 ? id < added : id > removed) break;
       --count;
+      l.chunkEntries -= <f64>nodeWidth(l, node);
     }
     store<i32>(chunk, count, 4);
   }

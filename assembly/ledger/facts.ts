@@ -11,6 +11,8 @@ export function ledgerGram(l: Ledger): usize { return l.gram; }
 export function ledgerFlops(l: Ledger): f64 { return l.flops; }
 export function ledgerAdded(l: Ledger): i32 { return l.added; }
 export function ledgerRemoved(l: Ledger): i32 { return l.removed; }
+/** Numbers in the columns of V. */
+export function ledgerEntries(l: Ledger): f64 { return l.chunkEntries; }
 /** Bytes beyond the base: columns of V, the small dense matrices, leaves. */
 export function ledgerBytes(l: Ledger): f64 {
   const a = <f64>l.addedRoom, r = <f64>l.removedRoom;

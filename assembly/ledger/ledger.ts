@@ -63,6 +63,8 @@ export class Ledger {
   chunks: usize;
   chunkRoom: i32;
   chunkBytes: f64;
+  /** Numbers in all chunks, without the room left. */
+  chunkEntries: f64;
 
   /** Rows with sign +1 and −1 in the ledger, and room. */
   added: i32;
@@ -135,8 +137,24 @@ export function ledgerCreate(factor: Factor, slots: i32, dimensions: usize): Led
   return l;
 }
 
-export function ledgerRelease(l: Ledger): void {
+/** Back to the base alone: no leaf, no row. No worked-on columns may be left. */
+export function ledgerRenew(l: Ledger): void {
+  releaseChunks(l);
+  memory.fill(l.chunks, 0, <usize>(12 * l.chunkRoom));
+  l.chunkBytes = l.chunkEntries = 0;
+  l.added = l.removed = 0;
+  l.parentCount = l.numberCount = 0;
+  l.slots = l.baseSlots;
+  l.positions = l.basePositions;
+  l.flops = 0;
+}
+
+function releaseChunks(l: Ledger): void {
   for (let node = 0; node < l.chunkRoom; ++node) release(load<u32>(l.chunks + <usize>(12 * node)));
+}
+
+export function ledgerRelease(l: Ledger): void {
+  releaseChunks(l);
   release(l.slotPosition);
   release(l.parentStart);
   release(l.parents);

@@ -6,6 +6,7 @@ import { kernel } from "../../bindings/loader.js";
 import { copyFloats, copyInts, Loan } from "../../bindings/memory.js";
 import { runSteps } from "../../bindings/slices.js";
 import { type Base, baseSteps, isSingular } from "../../src/estimate/base.js";
+import type { KernelInformation } from "../../src/estimate/information.js";
 import type { Information } from "../families/information.js";
 
 /** Marginals that an estimate tells the analysis to expect from a base: its order is chosen for them. */
@@ -33,7 +34,7 @@ export class Own {
 
   /** Takes the order that an estimate's base would have. */
   constructor(information: Information) {
-    const base = runSteps(baseSteps(information, QUERIES, Number.POSITIVE_INFINITY));
+    const base = runSteps(baseSteps(inKernel(information, this.#loan), QUERIES, Number.POSITIVE_INFINITY));
     if (isSingular(base)) throw new Error(`the matrix of the step is singular at unknown ${base.unknown}`);
     const { blockSizes, values, vector } = information;
     this.#base = base;
@@ -95,6 +96,23 @@ export class Own {
     this.#loan.giveBack();
     this.#base.free();
   }
+}
+
+/** The matrix in kernel memory, for as long as the loan lasts. */
+function inKernel({ order, columnPointers, rowIndices, values, blockSizes, vector }: Information, loan: Loan): KernelInformation {
+  const stateOf = new Int32Array(order);
+  for (let s = 0, u = 0; s < blockSizes.length; s += 1) for (let t = 0; t < blockSizes[s]!; t += 1) stateOf[u++] = s;
+  return {
+    order,
+    states: blockSizes.length,
+    blockSizes: loan.ints(blockSizes),
+    stateOf: loan.ints(stateOf),
+    columnPointers: loan.ints(columnPointers),
+    rowIndices: loan.ints(rowIndices),
+    values: loan.floats(values),
+    vector: loan.floats(vector),
+    giveBack: () => {},
+  };
 }
 
 /** For each slot where its state's block lies in order of arrival, and its first unknown. */

@@ -2,9 +2,9 @@
 import { MemoryLimitError } from "../../bindings/errors.js";
 import { status } from "../../bindings/kernel.js";
 import { kernel } from "../../bindings/loader.js";
-import { addressOrThrow, bytesAvailable, copyInts, Loan, requireMemory, withLoan } from "../../bindings/memory.js";
+import { addressOrThrow, bytesAvailable, copyInts, requireMemory, withLoan } from "../../bindings/memory.js";
 import type { Steps } from "../../bindings/slices.js";
-import type { Information } from "./information.js";
+import type { KernelInformation } from "./information.js";
 import type { BaseCosts } from "./policy.js";
 
 const ANALYSIS_SHARE = 0.4;
@@ -13,14 +13,12 @@ const ANALYSIS_SHARE = 0.4;
 export interface Base {
   readonly symbolic: number;
   readonly factor: number;
-  ledger: number;
+  readonly ledger: number;
   /** State numbers (places in the information matrix) by slot. */
   readonly stateOfSlot: Int32Array;
   readonly costs: BaseCosts;
   /** max Λ[j, j] ÷ L[j, j]²: how far elimination shrank a pivot, a lower bound on the condition of Λ scaled to unit diagonal. */
   readonly pivotSpread: number;
-  /** A fresh ledger on the same factor; the one before is given back. */
-  renewLedger(): void;
   free(): void;
 }
 
@@ -36,20 +34,15 @@ export interface Singular {
  *  @param memoryLimit bytes that its factor may take.
  *  @throws {MemoryLimitError} before the numbers are started.
  *  @returns the base with its ledger, right-hand side set, or where the matrix is not safely positive definite. */
-export function* baseSteps(information: Information, queries: number, memoryLimit: number): Steps<Base | Singular> {
+export function* baseSteps(information: KernelInformation, queries: number, memoryLimit: number): Steps<Base | Singular> {
   const k = kernel();
-  const { order, blockSizes } = information;
-  const loan = new Loan("A new base");
+  const { order, states, blockSizes, columnPointers, rowIndices, values } = information;
   let analysis = 0;
   let symbolic = 0;
   let factor = 0;
   let taken = false;
   try {
-    const columnStart = loan.ints(information.columnPointers);
-    const rowIndex = loan.ints(information.rowIndices);
-    const values = loan.floats(information.values);
-    const sizes = loan.ints(blockSizes);
-    analysis = addressOrThrow("A new base", k.analysisBegin(order, columnStart, rowIndex, blockSizes.length, sizes, 0, 0, queries), 256);
+    analysis = addressOrThrow("A new base", k.analysisBegin(order, columnPointers, rowIndices, states, blockSizes, 0, 0, queries), 256);
     const analysed = yield {
       advance: (budget) => k.analysisAdvance(analysis, budget),
       progress: () => k.analysisProgress(analysis),
@@ -78,63 +71,47 @@ export function* baseSteps(information: Information, queries: number, memoryLimi
     if (analysis) k.analysisRelease(analysis);
     if (factor && !taken) k.factorRelease(factor);
     if (symbolic && !taken) k.symbolicRelease(symbolic);
-    loan.giveBack();
   }
 }
 
 export const isSingular = (result: Base | Singular): result is Singular => "unknown" in result;
 
-function finish(information: Information, symbolic: number, factor: number): Base {
+function finish(
+  { order, states, blockSizes, stateOf, columnPointers, values, vector }: KernelInformation,
+  symbolic: number,
+  factor: number,
+): Base {
   const k = kernel();
-  const { order, blockSizes, vector, columnPointers, values } = information;
-  const elimination = copyInts(k.symbolicOrder(symbolic) >>> 0, order);
-  const stateOf = new Int32Array(order);
-  for (let s = 0, u = 0; s < blockSizes.length; s += 1) for (let t = 0; t < blockSizes[s]!; t += 1) stateOf[u++] = s;
-  // Unknowns of one state follow one another in elimination order, since their blocks are whole.
-  const stateOfSlot = new Int32Array(blockSizes.length);
-  const dimensions = new Int32Array(blockSizes.length);
-  for (let c = 0, slot = 0; c < order; slot += 1) {
-    const s = stateOf[elimination[c]!]!;
-    stateOfSlot[slot] = s;
-    dimensions[slot] = blockSizes[s]!;
-    c += blockSizes[s]!;
-  }
-  const eta = new Float64Array(order);
-  const diagonal = new Float64Array(order);
-  for (let c = 0; c < order; c += 1) {
-    eta[c] = vector[elimination[c]!]!;
-    diagonal[c] = values[columnPointers[c]!]!;
-  }
-  const pivotSpread = withLoan("The pivots", (loan) => k.pivotSpread(factor, loan.floats(diagonal)));
-  const makeLedger = (): number =>
-    withLoan("The ledger", (loan) => {
-      const ledger = addressOrThrow("The ledger", k.ledgerCreate(factor, blockSizes.length, loan.ints(dimensions)), 16 * order);
-      if (k.setRight(ledger, loan.floats(eta)) === status.ok) return ledger;
+  return withLoan("The ledger", (loan) => {
+    const stateOfSlot = loan.room(4 * states);
+    const dimensions = loan.room(4 * states);
+    k.orderStates(symbolic, stateOf, blockSizes, stateOfSlot, dimensions);
+    const x = loan.room(8 * order);
+    k.orderDiagonal(symbolic, columnPointers, values, x);
+    const pivotSpread = k.pivotSpread(factor, x);
+    const ledger = addressOrThrow("The ledger", k.ledgerCreate(factor, states, dimensions), 16 * order);
+    k.orderVector(symbolic, vector, x);
+    if (k.setRight(ledger, x) !== status.ok) {
       k.ledgerRelease(ledger);
       throw new MemoryLimitError("The ledger", 16 * order, bytesAvailable());
-    });
-  const base: Base = {
-    symbolic,
-    factor,
-    ledger: makeLedger(),
-    stateOfSlot,
-    pivotSpread,
-    costs: {
-      flops: k.symbolicFlops(symbolic),
-      nonzeros: k.symbolicNonzeros(symbolic),
-      bytes: k.factorBytes(symbolic),
-      states: blockSizes.length,
-    },
-    renewLedger: () => {
-      const ledger = makeLedger();
-      k.ledgerRelease(base.ledger);
-      base.ledger = ledger;
-    },
-    free: () => {
-      k.ledgerRelease(base.ledger);
-      k.factorRelease(factor);
-      k.symbolicRelease(symbolic);
-    },
-  };
-  return base;
+    }
+    return {
+      symbolic,
+      factor,
+      ledger,
+      stateOfSlot: copyInts(stateOfSlot, states),
+      pivotSpread,
+      costs: {
+        flops: k.symbolicFlops(symbolic),
+        nonzeros: k.symbolicNonzeros(symbolic),
+        bytes: k.factorBytes(symbolic),
+        states,
+      },
+      free: () => {
+        k.ledgerRelease(ledger);
+        k.factorRelease(factor);
+        k.symbolicRelease(symbolic);
+      },
+    };
+  });
 }

@@ -2,14 +2,18 @@
 
 import { MemoryLimitError } from "../../bindings/errors.js";
 import { status } from "../../bindings/kernel.js";
-import { runSteps, type SlicedCall, type Steps } from "../../bindings/slices.js";
+import { part, runSteps, type SlicedCall, type Steps } from "../../bindings/slices.js";
+import { IntList } from "../support/int-list.js";
 import { type Base, baseSteps, isSingular, type Singular } from "./base.js";
-import { assembleInformation } from "./information.js";
+import { assemblySteps } from "./information.js";
 import { type Leaf, splitLeaves } from "./leaf.js";
 import { backwardCost, carryingCost, inverseCost, rebaseCost, rebasePays, subtractionSpoils } from "./policy.js";
-import { type OwnedRows, System, type SystemEvent, type World } from "./system.js";
+import { countRows, type OwnedRows, System, type SystemEvent, type World } from "./system.js";
 import { type SavedTracked, Tracked } from "./tracked.js";
 import { findUndetermined } from "./undetermined.js";
+
+/** Share of a new base's work that summing up its information matrix takes, about. */
+const ASSEMBLY_SHARE = 0.15;
 
 /** What arrives and leaves in one commit. */
 export interface Batch {
@@ -130,7 +134,7 @@ export class Engine {
   *apply(batch: Batch, world: () => World, measurements: number, track: boolean, column: number): Steps<Outcome> {
     const { newStates, plus, minus } = batch;
     const begun = this.#latencyBudget === undefined ? 0 : performance.now();
-    const rowCount = [...plus, ...minus].reduce((sum, { rows }) => sum + rows.rows, 0);
+    const rowCount = countRows(plus) + countRows(minus);
     if (!this.#system) return yield* this.#rebase(world(), track, "the first commit", false);
     if (newStates.length > MOST_LEAVES) return yield* this.#rebase(world(), track, `${newStates.length} states at once`, false);
     const touched = new Set(newStates);
@@ -159,7 +163,7 @@ export class Engine {
     }
     const countedFlops = this.system.flops - flopsBefore;
     if (rowCount > 0) this.#flopsPerRow = countedFlops / rowCount;
-    let outcome = this.#ledgerOutcome(rowCount, predictedFlops, countedFlops, split.leaves.length, track);
+    let outcome = this.#ledgerOutcome(countRows(arriving) + countRows(minus), predictedFlops, countedFlops, split.leaves, track, column);
     const loss = this.system.loss();
     if (minus.length > 0 && loss > SUSPICIOUS_LOSS) {
       this.tracked.valid = false;
@@ -171,9 +175,13 @@ export class Engine {
     const reasons: string[] = [];
     const strength = this.system.strongest(addedBefore);
     if (track && this.tracked.valid && subtractionSpoils(strength * this.tracked.ratio, this.#baseBound)) {
-      this.tracked.valid = false;
-      reasons.push(`a reading made what it reads ${strength.toExponential(1)} times stronger: kept marginals are computed afresh`);
-      outcome = { ...outcome, because: `${outcome.because}; ${reasons[0]}` };
+      // At worst; what it did is known once the kept numbers have taken it in.
+      this.tracked.refresh(this.system, column);
+      if (subtractionSpoils(this.tracked.ratio, this.#baseBound)) {
+        this.tracked.valid = false;
+        reasons.push(`a reading made what it reads ${strength.toExponential(1)} times stronger: kept marginals are computed afresh`);
+        outcome = { ...outcome, because: `${outcome.because}; ${reasons[0]}` };
+      }
     }
     const isSpoilt = subtractionSpoils(loss, this.#baseBound) && loss > 10 * this.#lossRefused;
     if (isSpoilt) reasons.push(`differences in the ledger have made rounding errors ${loss.toExponential(1)} times larger`);
@@ -197,7 +205,7 @@ export class Engine {
       const keepTracked = signed && track && this.tracked.valid;
       if (keepTracked) this.tracked.refresh(system, column);
       if (plus.length + minus.length === 0) return;
-      const [p, m] = [plus, minus].map((list) => list.reduce((sum, { rows }) => sum + rows.rows, 0)) as [number, number];
+      const [p, m] = [countRows(plus), countRows(minus)];
       if (droppable) {
         if (keepTracked) {
           system.loadBatch([], minus);
@@ -238,11 +246,20 @@ export class Engine {
     for (const event of events) replay(system, event);
   }
 
-  #ledgerOutcome(rows: number, predictedFlops: number, countedFlops: number, leaves: number, track: boolean): Outcome {
+  /** @param rows those that went into the ledger: a leaf's own cost nothing beyond it. */
+  #ledgerOutcome(
+    rows: number,
+    predictedFlops: number,
+    countedFlops: number,
+    leaves: readonly Leaf[],
+    track: boolean,
+    column: number,
+  ): Outcome {
     const { system } = this;
-    const columns = rows + (track ? 3 : 0);
-    this.#carried += carryingCost(Math.max(columns, 1), system.bytes / 8, system.leafNumbers, system.added + system.removed);
-    const because = leaves > 0 ? "new states as leaves, rows between older ones in the ledger" : "rows in the ledger";
+    const isFresh = track && column >= 0 && leaves.length > 0 && !(leaves.length === 1 && this.tracked.follows(leaves[0]!));
+    const columns = rows + (isFresh ? this.#dimensionOf(column) : 0);
+    this.#carried += carryingCost(columns, system.entries, system.leafNumbers, system.added + system.removed);
+    const because = leaves.length > 0 ? "new states as leaves, rows between older ones in the ledger" : "rows in the ledger";
     return { route: "ledger", because, predictedFlops, countedFlops };
   }
 
@@ -288,7 +305,7 @@ export class Engine {
       if (!reason) return ledger;
       const all = world();
       const sizes = Int32Array.from(all.states, (state) => this.#dimensionOf(state));
-      const steps = baseSteps(this.#assemble(all, sizes), this.#queries, this.#memoryLimit);
+      const steps = this.#baseOf(all, sizes);
       const first = steps.next(status.ok);
       this.#background = {
         steps,
@@ -342,7 +359,7 @@ export class Engine {
    *  @throws {SingularBatch} nothing is changed then. */
   *#rebase(world: World, track: boolean, because: string, carry: boolean, column = -1): Steps<Outcome> {
     const sizes = Int32Array.from(world.states, (state) => this.#dimensionOf(state));
-    const base = yield* baseSteps(this.#assemble(world, sizes), this.#queries, this.#memoryLimit);
+    const base = yield* this.#baseOf(world, sizes);
     if (isSingular(base)) throw new SingularBatch(base);
     if (base.pivotSpread > SUSPICIOUS_SPREAD && this.#hasFreeStates(world)) {
       base.free();
@@ -387,12 +404,22 @@ export class Engine {
     return { route: "rebase", because, predictedFlops: base.costs.flops, countedFlops: base.costs.flops };
   }
 
-  #assemble(world: World, sizes: Int32Array) {
-    const place: number[] = [];
+  /** A base of everything in `world`, in steps. */
+  *#baseOf(world: World, sizes: Int32Array): Steps<Base | Singular> {
+    const place = new IntList((world.states.at(-1) ?? 0) + 1);
     world.states.forEach((state, k) => {
-      place[state] = k;
+      place.set(state, k, -1);
     });
-    return assembleInformation(sizes, (state) => place[state]!, world.rows);
+    const information = yield* part(
+      assemblySteps(sizes, (state) => place.at(state), world.rows),
+      0,
+      ASSEMBLY_SHARE,
+    );
+    try {
+      return yield* part(baseSteps(information, this.#queries, this.#memoryLimit), ASSEMBLY_SHARE, 1);
+    } finally {
+      information.giveBack();
+    }
   }
 
   #catchUpIsCheaper(system: System, base: Base): boolean {
@@ -403,15 +430,13 @@ export class Engine {
    *  @throws {SingularBatch} cannot happen for a committed system unless rounding has eaten it. */
   refresh(world: () => World, column: number, tolerance: number): void {
     const system = this.system;
-    if (this.tracked.isCurrent(system, column)) return;
     const { costs } = system.base;
-    const owed = this.tracked.owed(system);
-    const catchUp = backwardCost(owed + 3, costs.nonzeros);
+    const isCurrent = this.tracked.isCurrent(system, column);
+    const catchUp = isCurrent ? 0 : backwardCost(this.tracked.owed(system) + 3, costs.nonzeros);
     const afresh = inverseCost(costs) + (system.events.length > 0 ? rebaseCost(costs, system.slots, system.slots) : 0);
     if (this.tracked.valid && catchUp <= afresh) {
-      this.tracked.refresh(system, column);
-      if (!subtractionSpoils(this.tracked.ratio, this.#baseBound) && (this.trackedBound <= tolerance || this.#baseBound > tolerance))
-        return;
+      if (!isCurrent) this.tracked.refresh(system, column);
+      if (this.#isSound(tolerance)) return;
     }
     if (system.events.length > 0) {
       if (!this.#renewedForReading(world)) {
@@ -423,6 +448,13 @@ export class Engine {
     }
     this.tracked.recompute(this.system);
     this.tracked.refresh(this.system, column);
+  }
+
+  /** Whether kept numbers that are up to date are good enough, or as good as they can be had. */
+  #isSound(tolerance: number): boolean {
+    if (subtractionSpoils(this.tracked.ratio, this.#baseBound)) return false;
+    const hope = this.tracked.ratio > 2 || (this.system.events.length > 0 && this.#refusal === undefined);
+    return this.trackedBound <= tolerance || this.#baseBound > tolerance || !hope;
   }
 
   /** What `restore` needs, without copies of rows; undefined before the first commit. */
@@ -445,7 +477,7 @@ export class Engine {
    *  @throws {SingularBatch} the numbers of this kernel build do not bear it. After any failure: `free`. */
   restore({ world, events, carried, refused, lossRefused, refusal, flopsPerRow, tracked }: SavedEngine): void {
     const sizes = Int32Array.from(world.states, (state) => this.#dimensionOf(state));
-    const base = runSteps(baseSteps(this.#assemble(world, sizes), this.#queries, this.#memoryLimit));
+    const base = runSteps(this.#baseOf(world, sizes));
     if (isSingular(base)) throw new SingularBatch(base);
     const system = new System(base, world, sizes);
     this.#system = system;

@@ -1,4 +1,9 @@
-// The information matrix Σ Jᵀ R⁻¹ J and vector Σ Jᵀ R⁻¹ r of whitened rows, by blocks of states.
+// The information matrix Σ Jᵀ R⁻¹ J and vector Σ Jᵀ R⁻¹ r of whitened rows, by blocks of states, summed in the kernel.
+import { MemoryLimitError } from "../../bindings/errors.js";
+import { status } from "../../bindings/kernel.js";
+import { kernel } from "../../bindings/loader.js";
+import { addressOrThrow, bytesAvailable, copyFloats, copyInts, Loan, requireMemory } from "../../bindings/memory.js";
+import { runSteps, type SlicedCall, type Steps } from "../../bindings/slices.js";
 import type { WhitenedRows } from "./whitened.js";
 
 /** Lower triangle by columns, rows ascending, the diagonal first; every state's block is whole. */
@@ -12,135 +17,167 @@ export interface Information {
   readonly vector: Float64Array;
 }
 
-/** Sums up `rows` over the states 0 … sizes.length − 1; `place` gives each state id its number there.
- *  Cost: O(pairs of states in one measurement), with counting sorts, and their block products. */
-export function assembleInformation(sizes: Int32Array, place: (state: number) => number, rows: readonly WhitenedRows[]): Information {
-  const states = sizes.length;
-  const first = new Int32Array(states + 1);
-  for (let s = 0; s < states; s += 1) first[s + 1] = first[s]! + sizes[s]!;
-  const order = first[states]!;
-
-  // Pairs (lower-numbered, higher-numbered) of states read together, bucketed by the lower one.
-  let pairs = 0;
-  for (const { states: of } of rows) pairs += (of.length * (of.length + 1)) / 2;
-  const low = new Int32Array(pairs);
-  const high = new Int32Array(pairs);
-  const bucket = new Int32Array(states + 1);
-  let at = 0;
-  for (const { states: of } of rows) {
-    for (let a = 0; a < of.length; a += 1) {
-      const pa = place(of[a]!);
-      for (let b = 0; b <= a; b += 1) {
-        const pb = place(of[b]!);
-        low[at] = Math.min(pa, pb);
-        high[at] = Math.max(pa, pb);
-        bucket[low[at]! + 1]! += 1;
-        at += 1;
-      }
-    }
-  }
-  for (let s = 0; s < states; s += 1) bucket[s + 1]! += bucket[s]!;
-  const sorted = new Int32Array(pairs);
-  const fill = bucket.slice();
-  for (let p = 0; p < pairs; p += 1) {
-    const s = low[p]!;
-    sorted[fill[s]!] = p;
-    fill[s]! += 1;
-  }
-
-  // Distinct neighbours of each state with a larger number, ascending, and where each pair's block begins below the diagonal block.
-  const offset = new Int32Array(pairs);
-  const under = new Int32Array(states);
-  const seen = new Int32Array(states).fill(-1);
-  const spot = new Int32Array(states);
-  const neighbours: number[][] = [];
-  for (let s = 0; s < states; s += 1) {
-    const list: number[] = [];
-    for (let p = bucket[s]!; p < bucket[s + 1]!; p += 1) {
-      const h = high[sorted[p]!]!;
-      if (h === s || seen[h] === s) continue;
-      seen[h] = s;
-      list.push(h);
-    }
-    list.sort((a, b) => a - b);
-    let below = 0;
-    for (const h of list) {
-      spot[h] = below;
-      below += sizes[h]!;
-    }
-    under[s] = below;
-    neighbours.push(list);
-    for (let p = bucket[s]!; p < bucket[s + 1]!; p += 1) offset[sorted[p]!] = spot[high[sorted[p]!]!]!;
-  }
-
-  const columnPointers = new Int32Array(order + 1);
-  for (let s = 0; s < states; s += 1) {
-    for (let t = 0; t < sizes[s]!; t += 1) columnPointers[first[s]! + t + 1] = columnPointers[first[s]! + t]! + sizes[s]! - t + under[s]!;
-  }
-  const nonzeros = columnPointers[order]!;
-  const rowIndices = new Int32Array(nonzeros);
-  for (let s = 0; s < states; s += 1) {
-    for (let t = 0; t < sizes[s]!; t += 1) {
-      let p = columnPointers[first[s]! + t]!;
-      for (let u = t; u < sizes[s]!; u += 1) rowIndices[p++] = first[s]! + u;
-      for (const h of neighbours[s]!) for (let u = 0; u < sizes[h]!; u += 1) rowIndices[p++] = first[h]! + u;
-    }
-  }
-
-  const values = new Float64Array(nonzeros);
-  const vector = new Float64Array(order);
-  at = 0;
-  for (const { states: of, blocks, rows: m, residual } of rows) {
-    for (let a = 0; a < of.length; a += 1) {
-      const pa = place(of[a]!);
-      const blockA = blocks[a]!;
-      for (let u = 0; u < sizes[pa]!; u += 1) {
-        let sum = 0;
-        for (let q = 0; q < m; q += 1) sum += blockA[u * m + q]! * residual[q]!;
-        vector[first[pa]! + u]! += sum;
-      }
-      for (let b = 0; b <= a; b += 1) {
-        const pb = place(of[b]!);
-        const swap = pa < pb;
-        const columnState = swap ? pa : pb;
-        addBlock(
-          values,
-          columnPointers,
-          first[columnState]!,
-          sizes[columnState]!,
-          pa === pb ? -1 : offset[at]!,
-          swap ? blockA : blocks[b]!,
-          swap ? blocks[b]! : blockA,
-          m,
-        );
-        at += 1;
-      }
-    }
-  }
-  return { order, columnPointers, rowIndices, values, blockSizes: sizes, vector };
+/** The same in kernel memory, by addresses. */
+export interface KernelInformation {
+  readonly order: number;
+  readonly states: number;
+  /** i32[states]. */
+  readonly blockSizes: number;
+  /** i32[order]: the state of each unknown. */
+  readonly stateOf: number;
+  readonly columnPointers: number;
+  readonly rowIndices: number;
+  readonly values: number;
+  readonly vector: number;
+  giveBack(): void;
 }
 
-/** Adds rowBlockᵀ columnBlock at `offset` below the diagonal block of the columns from `firstColumn`; offset −1: the lower triangle of
- *  the diagonal block itself. */
-function addBlock(
-  values: Float64Array,
-  columnPointers: Int32Array,
-  firstColumn: number,
-  width: number,
-  offset: number,
-  columnBlock: Float64Array,
-  rowBlock: Float64Array,
-  m: number,
-): void {
-  const height = rowBlock.length / m;
-  for (let t = 0; t < width; t += 1) {
-    const from = offset < 0 ? t : 0;
-    let p = columnPointers[firstColumn + t]! + (offset < 0 ? 0 : width - t + offset);
-    for (let u = from; u < height; u += 1) {
-      let sum = 0;
-      for (let q = 0; q < m; q += 1) sum += rowBlock[u * m + q]! * columnBlock[t * m + q]!;
-      values[p]! += sum;
-      p += 1;
+/** Share of the work that laying the rows out in kernel memory takes, about. */
+const LAYING_SHARE = 0.4;
+/** Nanoseconds for one measurement, about: it sets where slices end. */
+const MEASUREMENT_TIME = 100;
+
+/** Sums up `rows` over the states 0 … sizes.length − 1; `place` gives each state id its number there. It holds kernel memory until it is
+ *  given back.  Cost: O(pairs of states in one measurement), with counting sorts, and their block products. */
+export function* assemblySteps(
+  sizes: Int32Array,
+  place: (state: number) => number,
+  rows: readonly WhitenedRows[],
+): Steps<KernelInformation> {
+  const k = kernel();
+  const what = "The information matrix";
+  const kept = new Loan(what);
+  const input = new Loan(what);
+  let job = 0;
+  let taken = false;
+  try {
+    let reads = 0;
+    let numbers = 0;
+    for (const { states, blocks, residual } of rows) {
+      reads += states.length;
+      numbers += residual.length;
+      for (const block of blocks) numbers += block.length;
     }
+    requireMemory(what, 8 * numbers + 8 * reads + 16 * rows.length);
+    const blockSizes = kept.ints(sizes);
+    const layout = new Layout(input, rows, place, reads, numbers);
+    yield layout;
+    job = addressOrThrow(
+      what,
+      k.assemblyBegin(sizes.length, blockSizes, rows.length, layout.readStart, layout.reads, layout.counts, layout.numbers),
+      16 * reads,
+    );
+    const result = yield {
+      advance: (budget) => k.assemblyAdvance(job, budget),
+      progress: () => k.assemblyProgress(job),
+      from: LAYING_SHARE,
+      to: 1,
+    };
+    if (result === status.outOfMemory) throw new MemoryLimitError(what, 12 * numbers, bytesAvailable());
+    const made: KernelInformation = {
+      order: k.assemblyOrder(job),
+      states: sizes.length,
+      blockSizes,
+      stateOf: k.assemblyStateOf(job) >>> 0,
+      columnPointers: k.assemblyColumnStart(job) >>> 0,
+      rowIndices: k.assemblyRowIndex(job) >>> 0,
+      values: k.assemblyValues(job) >>> 0,
+      vector: k.assemblyVector(job) >>> 0,
+      giveBack: releaser(job, kept),
+    };
+    taken = true;
+    return made;
+  } finally {
+    input.giveBack();
+    if (!taken) {
+      if (job) k.assemblyRelease(job);
+      kept.giveBack();
+    }
+  }
+}
+
+function releaser(job: number, kept: Loan): () => void {
+  return () => {
+    kernel().assemblyRelease(job);
+    kept.giveBack();
+  };
+}
+
+/** Lays rows out in kernel memory, some measurements a slice. */
+class Layout implements SlicedCall {
+  readonly readStart: number;
+  readonly reads: number;
+  readonly counts: number;
+  readonly numbers: number;
+  readonly from = 0;
+  readonly to = LAYING_SHARE;
+  readonly #rows: readonly WhitenedRows[];
+  readonly #place: (state: number) => number;
+  #at = 0;
+  #read = 0;
+  #number = 0;
+  readonly #allReads: number;
+  readonly #allNumbers: number;
+
+  constructor(loan: Loan, rows: readonly WhitenedRows[], place: (state: number) => number, reads: number, numbers: number) {
+    this.#rows = rows;
+    this.#place = place;
+    this.#allReads = reads;
+    this.#allNumbers = numbers;
+    this.readStart = loan.room(4 * (rows.length + 1));
+    this.reads = loan.room(4 * reads);
+    this.counts = loan.room(4 * rows.length);
+    this.numbers = loan.room(8 * numbers);
+  }
+
+  advance(budget: number): number {
+    const rows = this.#rows;
+    const { buffer } = kernel().memory;
+    const readStart = new Int32Array(buffer, this.readStart, rows.length + 1);
+    const reads = new Int32Array(buffer, this.reads, this.#allReads);
+    const counts = new Int32Array(buffer, this.counts, rows.length);
+    const numbers = new Float64Array(buffer, this.numbers, this.#allNumbers);
+    const end = Math.min(rows.length, this.#at + 1 + Math.floor(budget / MEASUREMENT_TIME));
+    let read = this.#read;
+    let number = this.#number;
+    for (let k = this.#at; k < end; k += 1) {
+      const { states, blocks, residual } = rows[k]!;
+      readStart[k] = read;
+      counts[k] = residual.length;
+      for (let s = 0; s < states.length; s += 1) {
+        reads[read++] = this.#place(states[s]!);
+        const block = blocks[s]!;
+        for (let p = 0; p < block.length; p += 1) numbers[number++] = block[p]!;
+      }
+      for (let q = 0; q < residual.length; q += 1) numbers[number++] = residual[q]!;
+    }
+    readStart[end] = read;
+    this.#at = end;
+    this.#read = read;
+    this.#number = number;
+    return end === rows.length ? status.ok : status.running;
+  }
+
+  progress(): number {
+    return this.#rows.length === 0 ? 1 : this.#at / this.#rows.length;
+  }
+}
+
+/** As `assemblySteps`, at once, and copied out of kernel memory. */
+export function assembleInformation(sizes: Int32Array, place: (state: number) => number, rows: readonly WhitenedRows[]): Information {
+  const made = runSteps(assemblySteps(sizes, place, rows));
+  try {
+    const columnPointers = copyInts(made.columnPointers, made.order + 1);
+    const nonzeros = columnPointers[made.order]!;
+    return {
+      order: made.order,
+      columnPointers,
+      rowIndices: copyInts(made.rowIndices, nonzeros),
+      values: copyFloats(made.values, nonzeros),
+      blockSizes: sizes,
+      vector: copyFloats(made.vector, made.order),
+    };
+  } finally {
+    made.giveBack();
   }
 }

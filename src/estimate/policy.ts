@@ -9,14 +9,14 @@ const nanoseconds = {
   factorEntry: 3,
   /** One entry of L times one column, in a solve that reads all of it. */
   solveEntry: 0.7,
-  /** One entry of the ledger's columns times one new column. */
-  ledgerEntry: 0.35,
+  /** One entry of the ledger's columns times one new column: compared with it, and combined with it. */
+  ledgerEntry: 0.6,
   /** One number of a leaf times one column, forward and back. */
   leafNumber: 1.5,
   /** Order and symbolic analysis, for one state. */
   analysisState: 1500,
   /** Assembling the information matrix, for one measurement. */
-  assembledMeasurement: 800,
+  assembledMeasurement: 250,
 } as const;
 
 /** Share of the factor's bytes that the ledger may hold beyond the states' own numbers. */
@@ -45,7 +45,7 @@ export function rebaseCost(last: BaseCosts, states: number, measurements: number
 
 /** Nanoseconds by which ledger and leaves make `columns` columns dearer than they would be on a new base. */
 export function carryingCost(columns: number, ledgerEntries: number, leafNumbers: number, rows: number): number {
-  return columns * (ledgerEntries * nanoseconds.ledgerEntry + leafNumbers * nanoseconds.leafNumber + rows * rows * nanoseconds.ledgerEntry);
+  return columns * ((ledgerEntries + rows * rows) * nanoseconds.ledgerEntry + leafNumbers * nanoseconds.leafNumber);
 }
 
 /** Nanoseconds of a backward solve with `columns` columns over all of L. */
@@ -66,7 +66,7 @@ export function rebasePays(carried: number, cost: number, ledgerBytes: number, b
 
 /** Ratio of a past trace to the present one from which a subtracted block is suspect, and the error at which it is. */
 const SUSPECT_RATIO = 1e3;
-const SUSPECT_ERROR = 1e-10;
+const SUSPECT_ERROR = 1e-7;
 
 /** Whether subtraction has eaten, or will eat, too many digits of a kept block: its relative error is that of the base times the ratio of
  *  the largest trace it has had to its trace now, and never heals, while a fresh block has the base's alone. */

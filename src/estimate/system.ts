@@ -3,8 +3,8 @@ import { MemoryLimitError } from "../../bindings/errors.js";
 import { status } from "../../bindings/kernel.js";
 import { kernel } from "../../bindings/loader.js";
 import { addressOrThrow, bytesAvailable, copyFloats, writeFloats } from "../../bindings/memory.js";
-import type { Base } from "./base.js";
 import { IntList } from "../support/int-list.js";
+import type { Base } from "./base.js";
 import type { Leaf } from "./leaf.js";
 import type { WhitenedRows } from "./whitened.js";
 
@@ -26,7 +26,7 @@ export interface OwnedRows {
   readonly measurement: number;
 }
 
-const countRows = (list: readonly OwnedRows[]): number => list.reduce((sum, { rows }) => sum + rows.rows, 0);
+export const countRows = (list: readonly OwnedRows[]): number => list.reduce((sum, { rows }) => sum + rows.rows, 0);
 
 export class System {
   readonly #k = kernel();
@@ -92,6 +92,10 @@ export class System {
   }
   get removed(): number {
     return this.#k.ledgerRemoved(this.base.ledger);
+  }
+  /** Numbers in the ledger's columns. */
+  get entries(): number {
+    return this.#k.ledgerEntries(this.base.ledger);
   }
   get bytes(): number {
     return this.#k.ledgerBytes(this.base.ledger);
@@ -295,7 +299,7 @@ export class System {
 
   /** Back to the base alone: no leaf, no row, no event. */
   renew(): void {
-    this.base.renewLedger();
+    this.#k.ledgerRenew(this.base.ledger);
     const slots = this.base.stateOfSlot.length;
     while (this.slots > slots) this.#pop();
     this.#owner.length = 0;

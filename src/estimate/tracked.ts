@@ -3,6 +3,7 @@
 import { status } from "../../bindings/kernel.js";
 import { kernel } from "../../bindings/loader.js";
 import { addressOrThrow, copyFloats, writeFloats } from "../../bindings/memory.js";
+import type { Leaf } from "./leaf.js";
 import type { System } from "./system.js";
 
 /** Unit columns carried forward together for blocks of new states: their product is square in this. */
@@ -255,11 +256,15 @@ export class Tracked {
     this.#rows = system.added;
   }
 
+  /** Whether the kept column goes over to a new state without a solve. */
+  follows({ parents }: Leaf): boolean {
+    return this.#columnState >= 0 && parents.length === 1 && parents[0] === this.#columnState;
+  }
+
   /** One new leaf whose only parent is the state of the kept column: its block and column follow from the parent's. */
   #followLeaf(system: System, slot: number, order: number, target: number): boolean {
-    if (slot + 1 !== system.slots || target !== slot || this.#columnState < 0) return false;
     const leaf = system.newestLeaf;
-    if (leaf?.parents.length !== 1 || leaf.parents[0] !== this.#columnState) return false;
+    if (slot + 1 !== system.slots || target !== slot || !leaf || !this.follows(leaf)) return false;
     const d = system.dimensionAt(slot);
     const scratch = system.scratch(8 * (3 * d * d + (d + 2) * this.#across + 16));
     this.#k.followLeaf(

@@ -44,9 +44,10 @@ function underWay(track: "all" | "none") {
 /** All answers that can be asked for, as bits. */
 function answers(estimate: Estimate, ids: readonly StateId[]) {
   const [a, b] = [ids[0]!, ids[11]!];
+  const marginals = estimate.marginals(); // first: reading may bring in a new base
   const { ledgerBytes, ...sizes } = estimate.statistics; // room may have grown, and stays
   return {
-    marginals: estimate.marginals(),
+    marginals,
     solution: estimate.solution(),
     cross: estimate.crossCovariance(a, b),
     joint: estimate.jointMarginal([b, ids[5]!]),

@@ -58,6 +58,7 @@ class Feed {
     for (let k = firstMeasurement; k < lastMeasurement; k += 1) estimate.addMeasurement(this.#input(k));
     if (this.#manner === "growing") return;
     if (s % 7 === 3) this.#copies.set(s, estimate.addMeasurement(this.#input(firstMeasurement - 1)));
+    if (s < 40) return; // while nothing is removed, rows that go are simply dropped
     const older = this.#copies.get(s - 2);
     if (older !== undefined && s % 2 === 0) {
       const { jacobians, residual } = stream.measurement(stream.step(s - 2).firstMeasurement - 1);

@@ -80,7 +80,7 @@ describe.each([
   });
 
   test("answers the same whether marginals are kept or not, and with bases built in slices", () => {
-    const stream = families[family].make(size);
+    const stream = families[family].make(10 * size);
     const [lazy, sliced] = [new Estimate(), new Estimate({ track: "all", latencyBudget: 0.05 })];
     let inSlices = 0;
     feed(stream, lazy, () => {});
