@@ -1,5 +1,12 @@
 import { beforeAll, expect, test } from "vitest";
-import { Estimate, memoryUsage, NotCommittedError, UndeterminedError, UnknownMeasurementError, UnknownStateError } from "../../src/index.js";
+import {
+  Estimate,
+  memoryUsage,
+  NotCommittedError,
+  UndeterminedError,
+  UnknownMeasurementError,
+  UnknownStateError,
+} from "../../src/index.js";
 import { initFacade } from "../support/facade.js";
 
 beforeAll(initFacade);
