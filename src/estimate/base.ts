@@ -8,6 +8,7 @@ import type { Information } from "./information.js";
 import type { BaseCosts } from "./policy.js";
 
 const ANALYSIS_SHARE = 0.4;
+const CONDITION_SHARE = 0.05;
 
 /** Kernel objects of one base; `free` gives them back. */
 export interface Base {
@@ -17,6 +18,8 @@ export interface Base {
   /** State numbers (places in the information matrix) by slot. */
   readonly stateOfSlot: Int32Array;
   readonly costs: BaseCosts;
+  /** An estimate of ‖D Σ D‖ with D² the diagonal of Λ. */
+  readonly condition: number;
   /** max Λ[j, j] ÷ L[j, j]²: how far elimination shrank a pivot, a lower bound on the condition of Λ scaled to unit diagonal. */
   readonly pivotSpread: number;
   /** A fresh ledger on the same factor; the one before is given back. */
@@ -43,6 +46,7 @@ export function* baseSteps(information: Information, queries: number, memoryLimi
   let analysis = 0;
   let symbolic = 0;
   let factor = 0;
+  let condition = 0;
   let taken = false;
   try {
     const columnStart = loan.ints(information.columnPointers);
@@ -68,14 +72,24 @@ export function* baseSteps(information: Information, queries: number, memoryLimi
       advance: (budget) => k.factorAdvance(factor, budget),
       progress: () => k.factorProgress(factor),
       from: ANALYSIS_SHARE,
-      to: 1,
+      to: 1 - CONDITION_SHARE,
     };
     if (result > 0) return { unknown: result - 1, pivot: k.factorPivot(factor) };
-    const base = finish(information, symbolic, factor);
+    const diagonal = Float64Array.from({ length: order }, (_, c) => information.values[information.columnPointers[c]!]!);
+    const bytesOfCondition = 8 * 4 * order;
+    condition = addressOrThrow("The condition of a new base", k.scaledConditionBegin(factor, loan.floats(diagonal)), bytesOfCondition);
+    yield {
+      advance: (budget) => k.scaledConditionAdvance(condition, budget),
+      progress: () => k.scaledConditionProgress(condition),
+      from: 1 - CONDITION_SHARE,
+      to: 1,
+    };
+    const base = finish(information, symbolic, factor, diagonal, k.scaledConditionResult(condition));
     taken = true;
     return base;
   } finally {
     if (analysis) k.analysisRelease(analysis);
+    if (condition) k.scaledConditionRelease(condition);
     if (factor && !taken) k.factorRelease(factor);
     if (symbolic && !taken) k.symbolicRelease(symbolic);
     loan.giveBack();
@@ -84,9 +98,9 @@ export function* baseSteps(information: Information, queries: number, memoryLimi
 
 export const isSingular = (result: Base | Singular): result is Singular => "unknown" in result;
 
-function finish(information: Information, symbolic: number, factor: number): Base {
+function finish(information: Information, symbolic: number, factor: number, diagonal: Float64Array, estimate: number): Base {
   const k = kernel();
-  const { order, blockSizes, vector, columnPointers, values } = information;
+  const { order, blockSizes, vector } = information;
   const elimination = copyInts(k.symbolicOrder(symbolic) >>> 0, order);
   const stateOf = new Int32Array(order);
   for (let s = 0, u = 0; s < blockSizes.length; s += 1) for (let t = 0; t < blockSizes[s]!; t += 1) stateOf[u++] = s;
@@ -100,11 +114,7 @@ function finish(information: Information, symbolic: number, factor: number): Bas
     c += blockSizes[s]!;
   }
   const eta = new Float64Array(order);
-  const diagonal = new Float64Array(order);
-  for (let c = 0; c < order; c += 1) {
-    eta[c] = vector[elimination[c]!]!;
-    diagonal[c] = values[columnPointers[c]!]!;
-  }
+  for (let c = 0; c < order; c += 1) eta[c] = vector[elimination[c]!]!;
   const pivotSpread = withLoan("The pivots", (loan) => k.pivotSpread(factor, loan.floats(diagonal)));
   const makeLedger = (): number =>
     withLoan("The ledger", (loan) => {
@@ -118,6 +128,7 @@ function finish(information: Information, symbolic: number, factor: number): Bas
     factor,
     ledger: makeLedger(),
     stateOfSlot,
+    condition: Math.max(estimate, pivotSpread),
     pivotSpread,
     costs: {
       flops: k.symbolicFlops(symbolic),

@@ -30,12 +30,13 @@ class Room {
   }
 }
 
-/** Kept numbers lose as many digits as the share of what held a state that a removal leaves is small: six here, which leaves ten. */
-const WEAK_REMOVAL = 1e-6;
+/** Kept numbers lose as many digits as a removal makes states weaker: six here, which leaves ten. */
+const WEAKENED = 1e6;
 
 /** Kept numbers as they were saved. */
 export interface SavedTracked {
   readonly ratio: number;
+  readonly error: number;
   /** Undefined when they have to be computed afresh. */
   readonly numbers:
     | {
@@ -66,6 +67,8 @@ export class Tracked {
   valid = false;
   /** Largest ratio of a block's past trace to its trace now: what subtraction may have cost in digits. */
   ratio = 1;
+  /** The largest bound under which any part of the numbers was computed, relative to the largest trace that a block has had since. */
+  error = 0;
 
   /** Whether the numbers include all rows and slots. */
   isCurrent(system: System, column: number): boolean {
@@ -73,6 +76,10 @@ export class Tracked {
   }
   get slots(): number {
     return this.#blockStart.length - 1;
+  }
+  /** Added rows that the numbers include. */
+  get rows(): number {
+    return this.#rows;
   }
   /** Rows that came since. */
   owed(system: System): number {
@@ -112,6 +119,7 @@ export class Tracked {
     this.#largest.reserve(8 * system.slots, 0);
     new Float64Array(this.#k.memory.buffer, this.#largest.address, system.slots).fill(0);
     this.ratio = this.#k.traceRatio(system.base.ledger, this.#blocks.address, this.#largest.address);
+    this.error = system.bound();
   }
 
   #reserveBlocks(system: System, slots = system.slots): void {
@@ -134,6 +142,7 @@ export class Tracked {
     const wasSlots = this.slots;
     this.#reserveBlocks(system);
     const target = column < 0 ? -1 : system.slotOf(column);
+    this.error = Math.max(this.error, system.bound());
     const counted = k.countAdded(ledger, since + (system.added - since - rows));
     try {
       // New states first, as they stood before the rows that came since.
@@ -185,8 +194,10 @@ export class Tracked {
     const k = this.#k;
     const { ledger } = system.base;
     if (k.factorInnovation(ledger, plus, minus) !== status.ok) return false;
+    const growth = k.innovationGrowth(ledger, plus, minus);
+    this.error = Math.max(this.error, growth * system.bound());
     enter();
-    if (k.weakestInnovation(ledger, plus, minus) < WEAK_REMOVAL) {
+    if (growth > WEAKENED) {
       this.valid = false;
       return true;
     }
@@ -199,6 +210,7 @@ export class Tracked {
   /** After settling a signed batch, or dropping rows. */
   count(system: System): void {
     this.#rows = system.added;
+    this.error = Math.max(this.error, system.bound());
   }
 
   /** One new leaf whose only parent is the state of the kept column: its block and column follow from the parent's. */
@@ -341,10 +353,11 @@ export class Tracked {
 
   /** All numbers, to be brought back by `restore`: up to date or not. */
   save(system: System): SavedTracked {
-    if (!this.valid) return { ratio: this.ratio, numbers: undefined };
+    if (!this.valid) return { ratio: this.ratio, error: this.error, numbers: undefined };
     const across = this.#columnState < 0 ? 0 : system.dimensionAt(system.slotOf(this.#columnState));
     return {
       ratio: this.ratio,
+      error: this.error,
       numbers: {
         slots: this.slots,
         rows: this.#rows,
@@ -357,8 +370,9 @@ export class Tracked {
   }
 
   /** @param system one that has the leaves and rows, in the same order, of the system that the numbers were saved with. */
-  restore(system: System, { ratio, numbers }: SavedTracked): void {
+  restore(system: System, { ratio, error, numbers }: SavedTracked): void {
     this.ratio = ratio;
+    this.error = error;
     this.valid = false;
     if (!numbers) return;
     const { slots, rows, columnState, blocks, largest, column } = numbers;
