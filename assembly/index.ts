@@ -35,6 +35,9 @@ export { inverseEntries } from "./solve/entries";
 export { inverseBegin, inverseAdvance, inverseProgress, inverseRelease, inverseDiagonal } from "./inverse/selected-inverse";
 export { inverseOnMatrix, inverseOnFactor, inverseFactorColumns, factorEntries } from "./inverse/pattern";
 export { reciprocalCondition } from "./condition";
+export {
+  scaledConditionBegin, scaledConditionAdvance, scaledConditionProgress, scaledConditionResult, scaledConditionRelease,
+} from "./scaled-condition";
 export { ledgerCreate, ledgerRenew, ledgerRelease } from "./ledger/ledger";
 export { addLeaf, dropLeaves } from "./ledger/leaves";
 export {
@@ -46,6 +49,7 @@ export {
   factorInnovation, scaleColumns, updateKept, takeColumn, followLeaf, extendColumn, blocksOfInverse, forgetPast,
 } from "./ledger/tracked";
 export {
-  ledgerX, ledgerGram, ledgerAdded, ledgerRemoved, ledgerEntries, ledgerBytes, ledgerFlops, ledgerLogDeterminant, strongestRow, ledgerLoss, weakestInnovation,
+  ledgerX, ledgerGram, ledgerOwnGram, ledgerAdded, ledgerRemoved, ledgerEntries, ledgerBytes, ledgerFlops, ledgerLogDeterminant, strongestRow,
+  addedGrowth, removedReach, removedGrowth, owedGrowth, innovationGrowth,
 } from "./ledger/facts";
 export { householderScratch, triangularize } from "./dense/householder";

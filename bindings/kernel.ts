@@ -71,6 +71,12 @@ export interface KernelExports {
   pivotSpread(factor: number, diagonal: number): number;
   reciprocalCondition(factor: number, columnStart: number, rowIndex: number, values: number): number;
 
+  scaledConditionBegin(factor: number, diagonal: number): number;
+  scaledConditionAdvance(job: number, budget: number): number;
+  scaledConditionProgress(job: number): number;
+  scaledConditionResult(job: number): number;
+  scaledConditionRelease(job: number): void;
+
   solveBegin(factor: number, target: number, columns: number, units: number): number;
   solveAdvance(job: number, budget: number): number;
   solveProgress(job: number): number;
@@ -91,6 +97,7 @@ export interface KernelExports {
   ledgerRelease(ledger: number): void;
   ledgerX(ledger: number): number;
   ledgerGram(ledger: number): number;
+  ledgerOwnGram(ledger: number): number;
   ledgerAdded(ledger: number): number;
   ledgerRemoved(ledger: number): number;
   ledgerEntries(ledger: number): number;
@@ -98,8 +105,11 @@ export interface KernelExports {
   ledgerFlops(ledger: number): number;
   ledgerLogDeterminant(ledger: number): number;
   strongestRow(ledger: number, since: number): number;
-  ledgerLoss(ledger: number): number;
-  weakestInnovation(ledger: number, plus: number, minus: number): number;
+  addedGrowth(ledger: number): number;
+  removedReach(ledger: number): number;
+  removedGrowth(ledger: number): number;
+  owedGrowth(ledger: number, since: number): number;
+  innovationGrowth(ledger: number, plus: number, minus: number): number;
   addLeaf(ledger: number, dimension: number, count: number, parents: number, numbers: number, z: number): number;
   dropLeaves(ledger: number, slots: number): void;
   setRight(ledger: number, eta: number): number;

@@ -4,6 +4,7 @@
  *  Source: the square-root form of sequential least squares; Golub, Van Loan, "Matrix Computations", section 5.3; Bierman,
  *  "Factorization Methods for Discrete Sequential Estimation" (1977), ch. 4. */
 import { atF64, atI32, i32At, setI32 } from "../memory/access";
+import { release } from "../memory/heap";
 import { OK, OUT_OF_MEMORY } from "../memory/status";
 import { multiply } from "../dense/multiply";
 import { solveRight, solveRightTransposed } from "../dense/solve-right";
@@ -44,10 +45,18 @@ export function addLeaf(l: Ledger, dimension: i32, count: i32, parents: usize, n
   return OK;
 }
 
-/** Takes the newest leaves away until `slots` slots are left. They must have no row in the ledger. */
+/** Takes the newest leaves away until `slots` slots are left. They must have no row in the ledger. Room that rows which were entered and
+ *  withdrawn had taken at them goes too: the next leaf may be wider. */
 export function dropLeaves(l: Ledger, slots: i32): void {
   assert(slots >= l.baseSlots);
   if (slots >= l.slots) return;
+  for (let slot = slots; slot < l.slots; ++slot) {
+    const chunk = l.chunks + <usize>(12 * (l.factor.symbolic.supernodes + slot - l.baseSlots));
+    assert(load<i32>(chunk, 4) == 0);
+    l.chunkBytes -= <f64>load<i32>(chunk, 8) * <f64>(4 + 8 * slotDimension(l, slot));
+    release(load<u32>(chunk));
+    memory.fill(chunk, 0, 12);
+  }
   l.parentCount = i32At(l.parentStart, slots);
   l.numberCount = i32At(l.leafStart, slots);
   l.positions = i32At(l.slotPosition, slots);

@@ -83,12 +83,14 @@ export function updateKept(
   let ratio: f64 = 1;
   for (let rank = 0; rank < l.slots; ++rank, largest += 8) {
     const slot = i32At(arrivals, rank), d = slotDimension(l, slot), b = atF64(l.x, i32At(l.slotPosition, slot) * side);
-    let trace: f64;
+    let trace: f64 = 0;
+    for (let j = 0; j < d; ++j) trace += f64At(block, j * (d + 1));
+    const past = max(load<f64>(largest), trace);
+    store<f64>(largest, past);
     if (d == 1) trace = updateState<One>(1, b, step, plus, rows, fresh, across, turned, block, column, stride);
     else if (d == 2) trace = updateState<Two>(2, b, step, plus, rows, fresh, across, turned, block, column, stride);
     else if (d == 3) trace = updateState<Three>(3, b, step, plus, rows, fresh, across, turned, block, column, stride);
     else trace = updateState<Many>(d, b, step, plus, rows, fresh, across, turned, block, column, stride);
-    const past = load<f64>(largest);
     if (!(past >= trace)) store<f64>(largest, trace);
     else if (!(past <= ratio * trace)) ratio = trace > 0 ? past / trace : Infinity;
     block += <usize>(d * d) << 3;

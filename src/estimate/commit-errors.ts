@@ -40,7 +40,7 @@ export class UncertainAnswerError extends SigmatideError {
     super(
       "UNCERTAIN_ANSWER",
       `The marginals are good to a relative error of ${bound.toExponential(1)} only, and the tolerance is ${tolerance.toExponential(1)}: the ` +
-        "system is ill-conditioned. Add a prior or a tie, choose units nearer to one another, raise the tolerance, or set onDoubt: 'answer'.",
+        "system is ill-conditioned. Add a prior or a tie where it is weak, raise the tolerance, or set onDoubt: 'answer'.",
       { bound, tolerance },
     );
   }

@@ -5,6 +5,7 @@ import { status } from "../../bindings/kernel.js";
 import { part, runSteps, type SlicedCall, type Steps } from "../../bindings/slices.js";
 import { IntList } from "../support/int-list.js";
 import { type Base, baseSteps, isSingular, type Singular } from "./base.js";
+import { boundOfBase, closedBound } from "./bound.js";
 import { assemblySteps } from "./information.js";
 import { type Leaf, splitLeaves } from "./leaf.js";
 import { backwardCost, carryingCost, inverseCost, rebaseCost, rebasePays, subtractionSpoils } from "./policy.js";
@@ -56,16 +57,13 @@ const FIRST_PATH_SHARE = 0.05;
 const MOST_LEAVES = 64;
 /** Rows between old states that one commit may bring into the ledger. */
 const MOST_ROWS = 192;
-/** ε times the pivot spread, times this, stands for the relative error of a marginal from a fresh base: rounding of a Cholesky factor grows
- *  with the scaled condition (Demmel 1989; Higham, "Accuracy and Stability", ch. 10), of which the spread is a lower bound. The factor is
- *  chosen, not yet measured. */
-const ERROR_FACTOR = 64;
-/** Removed rows whose differences have grown rounding errors by this: what is left of a state is good to 2e-16 × 1e8, or is rounding alone. */
+/** Removed rows that have made states weaker by this: what is left of one is good to 2e-16 × 1e8, or is rounding alone. */
 const SUSPICIOUS_LOSS = 1e8;
 /** A pivot that elimination has left this much smaller than its diagonal entry may be rounding alone: 500 ε. */
 const SUSPICIOUS_SPREAD = 1e13;
-/** Bounds below this are never a reason to keep an old base. */
-const HARMLESS = 1e-11;
+/** Bounds below this are never a reason to keep an old base. Errors themselves are mostly a hundredth of their bounds; a chain on one prior
+ *  passes it at a few hundred poses, a heavy patrol at some 10 000. */
+const HARMLESS = 1e-8;
 
 /** Nanoseconds of work asked for in one go while a budget of time is spent: the most by which a slice may pass it. */
 const BACKGROUND_SLICE = 2e5;
@@ -97,7 +95,7 @@ export class Engine {
   #queries = 1000;
   /** A new base being built while the old one answers. */
   #background: Background | undefined;
-  /** Bound from the base; see `bound`. */
+  /** The bound on blocks from the base alone. */
   #baseBound = Number.EPSILON;
 
   /** @param latencyBudget milliseconds of a commit beyond which a new base is built in slices; undefined: at once.
@@ -118,13 +116,27 @@ export class Engine {
   get refusal(): string | undefined {
     return this.#refusal;
   }
-  /** A bound on the relative error of blocks computed now: that of the base times what the ledger's differences cost; of tracked
-   *  ones: times the ratio of past to present trace. */
+  /** A bound on the error of blocks computed now by forward solves, relative to their traces; see `bound.ts`. */
   get baseBound(): number {
-    return this.#system ? this.#baseBound * this.#system.loss() : this.#baseBound;
+    return this.#system ? closedBound(this.#system.bound()) : 0;
   }
+  /** The same of kept blocks, as they will be once they have followed: that of what they were computed from, times the ratio of their
+   *  largest past trace to the present one, and what the rows that they still owe can add to it. */
   get trackedBound(): number {
-    return this.baseBound * this.tracked.ratio;
+    const { system, tracked } = this;
+    const growth = tracked.owed(system) > 0 ? system.owedGrowth(tracked.rows) : 1;
+    return closedBound(Math.max(tracked.error, system.bound()) * tracked.ratio * growth);
+  }
+  /** A bound for whatever is read until the next commit, by whichever way: from kept blocks, through the ledger, or from the new base that
+   *  `refresh` may take. */
+  boundOfReadings(track: boolean, tolerance: number): number {
+    if (!this.#system) return 0;
+    if (!track) return this.baseBound;
+    if (this.system.events.length === 0 && !this.tracked.valid) return this.baseBound;
+    if (this.#keepsNumbers() && this.#keptAreGood(tolerance)) return Math.max(this.baseBound, this.trackedBound);
+    if (!this.tracked.valid) return this.#mostOfNewBase();
+    // Kept after all, when they turn out to have lost less than they might: within the tolerance if a fresh block is.
+    return Math.max(this.#mostOfNewBase(), this.baseBound > tolerance ? this.trackedBound : Math.min(this.trackedBound, tolerance));
   }
 
   /** Applies a batch, or throws with everything as it was.
@@ -164,8 +176,9 @@ export class Engine {
     const countedFlops = this.system.flops - flopsBefore;
     if (rowCount > 0) this.#flopsPerRow = countedFlops / rowCount;
     let outcome = this.#ledgerOutcome(countRows(arriving) + countRows(minus), predictedFlops, countedFlops, split.leaves, track, column);
-    const loss = this.system.loss();
-    if (minus.length > 0 && loss > SUSPICIOUS_LOSS) {
+    const { removedReach, removedGrowth } = this.system.sources();
+    const loss = this.#loss();
+    if (minus.length > 0 && (1 + removedReach) * removedGrowth > SUSPICIOUS_LOSS) {
       this.tracked.valid = false;
       if (this.#hasFreeStates(world())) {
         this.#putBack(before);
@@ -174,10 +187,10 @@ export class Engine {
     }
     const reasons: string[] = [];
     const strength = this.system.strongest(addedBefore);
-    if (track && this.tracked.valid && subtractionSpoils(strength * this.tracked.ratio, this.#baseBound)) {
+    if (track && this.tracked.valid && subtractionSpoils(strength * this.tracked.ratio, this.tracked.error)) {
       // At worst; what it did is known once the kept numbers have taken it in.
       this.tracked.refresh(this.system, column);
-      if (subtractionSpoils(this.tracked.ratio, this.#baseBound)) {
+      if (subtractionSpoils(this.tracked.ratio, this.tracked.error)) {
         this.tracked.valid = false;
         reasons.push(`a reading made what it reads ${strength.toExponential(1)} times stronger: kept marginals are computed afresh`);
         outcome = { ...outcome, because: `${outcome.because}; ${reasons[0]}` };
@@ -348,9 +361,14 @@ export class Engine {
     this.#background = undefined;
   }
 
+  /** By what factor leaves and ledger have made the bound larger than that of the base alone. */
+  #loss(): number {
+    return this.system.bound() / this.#baseBound;
+  }
+
   #refuse(why: string): void {
     this.#refusal = why;
-    this.#lossRefused = this.system.loss();
+    this.#lossRefused = this.#loss();
     this.#refused *= 2;
     this.#carried = 0;
   }
@@ -381,9 +399,9 @@ export class Engine {
   /** Puts a new system in the place of the old one, unless it would be the worse of the two. */
   #adopt(next: System, track: boolean, because: string, carry: boolean, column: number): Outcome {
     const { base } = next;
-    const bound = boundOf(base);
+    const bound = boundOfBase(base.condition);
     const old = this.#system;
-    if (old && carry && bound > Math.max(HARMLESS, 2 * this.baseBound) && old.slots > 0) {
+    if (old && carry && bound > this.#mostOfNewBase() && old.slots > 0) {
       next.free();
       this.#refuse(`a new base would be good to ${bound.toExponential(1)} only, the present one to ${this.baseBound.toExponential(1)}`);
       return { route: "ledger", because: `rows in the ledger; ${this.#refusal}`, predictedFlops: 0, countedFlops: 0 };
@@ -402,6 +420,11 @@ export class Engine {
     this.#lossRefused = 0;
     this.#refusal = undefined;
     return { route: "rebase", because, predictedFlops: base.costs.flops, countedFlops: base.costs.flops };
+  }
+
+  /** The bound that a new base may have beside the one there is. */
+  #mostOfNewBase(): number {
+    return Math.max(HARMLESS, 2 * this.baseBound);
   }
 
   /** A base of everything in `world`, in steps. */
@@ -430,13 +453,10 @@ export class Engine {
    *  @throws {SingularBatch} cannot happen for a committed system unless rounding has eaten it. */
   refresh(world: () => World, column: number, tolerance: number): void {
     const system = this.system;
-    const { costs } = system.base;
     const isCurrent = this.tracked.isCurrent(system, column);
-    const catchUp = isCurrent ? 0 : backwardCost(this.tracked.owed(system) + 3, costs.nonzeros);
-    const afresh = inverseCost(costs) + (system.events.length > 0 ? rebaseCost(costs, system.slots, system.slots) : 0);
-    if (this.tracked.valid && catchUp <= afresh) {
+    if (isCurrent || this.#keepsNumbers()) {
       if (!isCurrent) this.tracked.refresh(system, column);
-      if (this.#isSound(tolerance)) return;
+      if (this.#keptAreGood(tolerance)) return;
     }
     if (system.events.length > 0) {
       if (!this.#renewedForReading(world)) {
@@ -450,11 +470,19 @@ export class Engine {
     this.tracked.refresh(this.system, column);
   }
 
-  /** Whether kept numbers that are up to date are good enough, or as good as they can be had. */
-  #isSound(tolerance: number): boolean {
-    if (subtractionSpoils(this.tracked.ratio, this.#baseBound)) return false;
-    const hope = this.tracked.ratio > 2 || (this.system.events.length > 0 && this.#refusal === undefined);
-    return this.trackedBound <= tolerance || this.#baseBound > tolerance || !hope;
+  /** Whether kept numbers catch up rather than being computed afresh. */
+  #keepsNumbers(): boolean {
+    const { system, tracked } = this;
+    const { costs } = system.base;
+    const catchUp = backwardCost(tracked.owed(system) + 3, costs.nonzeros);
+    const afresh = inverseCost(costs) + (system.events.length > 0 ? rebaseCost(costs, system.slots, system.slots) : 0);
+    return tracked.valid && catchUp <= afresh;
+  }
+
+  /** Whether kept numbers are as good as they have to be, or nothing would be gained. */
+  #keptAreGood(tolerance: number): boolean {
+    const bound = this.trackedBound;
+    return !subtractionSpoils(bound / this.baseBound, this.baseBound) && (bound <= tolerance || this.baseBound > tolerance);
   }
 
   /** What `restore` needs, without copies of rows; undefined before the first commit. */
@@ -483,7 +511,7 @@ export class Engine {
     this.#system = system;
     for (const event of events) replay(system, event);
     this.tracked.restore(system, tracked);
-    this.#baseBound = boundOf(base);
+    this.#baseBound = boundOfBase(base.condition);
     this.#carried = carried;
     this.#refused = refused;
     this.#lossRefused = lossRefused;
@@ -509,9 +537,6 @@ export class Engine {
     this.#system = undefined;
   }
 }
-
-/** A bound on the relative error of blocks from a fresh base. */
-const boundOf = (base: Base): number => ERROR_FACTOR * Number.EPSILON * base.pivotSpread;
 
 /** Does to a system what an event did to another one. A drop of rows that its base holds becomes their removal. */
 function replay(system: System, event: SystemEvent): void {

@@ -8,6 +8,8 @@ export interface Leaf {
   readonly parents: readonly number[];
   /** L = Rᵀ (d × d, lower, column-major), then G of each parent (d × its dimension, column-major). */
   readonly numbers: Float64Array;
+  /** Squared length of each column that was rotated: the state's, then each parent's. */
+  readonly squares: Float64Array;
   readonly z: Float64Array;
 }
 
@@ -31,6 +33,8 @@ function splitLeaf(
   const states: number[] = [];
   for (const rows of pool) for (const s of rows.states) if (s !== state && !states.includes(s)) states.push(s);
   const { a, m, columns, columnOf } = gather([state, ...states], pool, dimensionOf);
+  const squares = new Float64Array(columns);
+  for (let k = 0; k < columns * m; k += 1) squares[Math.floor(k / m)]! += a[k]! * a[k]!;
   if (m < d || !reflect(a, m, d, columns + 1, RANK_TOLERANCE)) return undefined;
 
   const numbers = new Float64Array(d * columns);
@@ -53,7 +57,7 @@ function splitLeaf(
     });
     rest = { states, rows: left, blocks, residual: a.slice(columns * m + d, (columns + 1) * m) };
   }
-  return { leaf: { state, dimension: d, parents: states, numbers, z }, rest };
+  return { leaf: { state, dimension: d, parents: states, numbers, squares, z }, rest };
 }
 
 /** All rows of `pool` as one column-major matrix m × (columns + 1), states side by side as listed, the residual last. */
@@ -81,7 +85,22 @@ function gather(
     a.set(residual, columns * m + top);
     top += rows;
   }
+  sortRows(a, m, columns);
   return { a, m, columns, columnOf };
+}
+
+/** Rows by decreasing largest entry: reflections then leave errors of each row's own size, so that weak rows beside strong ones keep their
+ *  digits. Sources: Powell, Reid (1969); Cox, Higham, "Stability of Householder QR factorization for weighted least squares" (1998). */
+function sortRows(a: Float64Array, m: number, columns: number): void {
+  const sizes = new Float64Array(m);
+  for (let k = 0; k < columns * m; k += 1) sizes[k % m] = Math.max(sizes[k % m]!, Math.abs(a[k]!));
+  if (sizes.every((size, i) => i === 0 || size <= sizes[i - 1]!)) return;
+  const order = Array.from(sizes.keys()).sort((i, j) => sizes[j]! - sizes[i]!);
+  const column = new Float64Array(m);
+  for (let at = 0; at < a.length; at += m) {
+    for (let i = 0; i < m; i += 1) column[i] = a[at + order[i]!]!;
+    a.set(column, at);
+  }
 }
 
 /** Householder reflections that make the first d of `columns` columns upper triangular; false when one of them leaves no more than

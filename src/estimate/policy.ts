@@ -64,10 +64,11 @@ export function rebasePays(carried: number, cost: number, ledgerBytes: number, b
   return undefined;
 }
 
-/** Ratio of a past trace to the present one from which a subtracted block is suspect, and the error at which it is. */
+/** How many times the error of a fresh number a difference may carry before it is suspect, and the error at which it is. */
 const SUSPECT_RATIO = 1e3;
-const SUSPECT_ERROR = 1e-7;
+const SUSPECT_ERROR = 5e-7;
 
-/** Whether subtraction has eaten, or will eat, too many digits of a kept block: its relative error is that of the base times the ratio of
- *  the largest trace it has had to its trace now, and never heals, while a fresh block has the base's alone. */
-export const subtractionSpoils = (ratio: number, baseBound: number): boolean => ratio > SUSPECT_RATIO && ratio * baseBound > SUSPECT_ERROR;
+/** Whether subtraction has eaten, or will eat, too many digits: of a kept block, whose relative error is that of its computation times the
+ *  ratio of the largest trace it has had to its trace now, and never heals; or in the ledger.
+ *  @param error the bound on the relative error of what is subtracted. */
+export const subtractionSpoils = (ratio: number, error: number): boolean => ratio > SUSPECT_RATIO && ratio * error > SUSPECT_ERROR;

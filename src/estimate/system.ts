@@ -5,7 +5,9 @@ import { kernel } from "../../bindings/loader.js";
 import { addressOrThrow, bytesAvailable, copyFloats, writeFloats } from "../../bindings/memory.js";
 import { IntList } from "../support/int-list.js";
 import type { Base } from "./base.js";
+import { type ErrorSources, firstOrderBound } from "./bound.js";
 import type { Leaf } from "./leaf.js";
+import { LeafCondition } from "./leaf-condition.js";
 import type { WhitenedRows } from "./whitened.js";
 
 /** All that is in force after a commit: what a base is built from. */
@@ -45,6 +47,11 @@ export class System {
   #scratchBytes = 0;
   leafNumbers = 0;
   #newestLeaf: Leaf | undefined;
+  readonly #leafCondition = new LeafCondition();
+  /** By slot, of states of the base that leaves hang on. */
+  readonly #parentCovariance = new Map<number, Float64Array>();
+  /** Undefined when leaves or rows have changed since. */
+  #sources: ErrorSources | undefined;
 
   /** @param world its states as they are numbered in the base's information matrix. @param sizes their dimensions. */
   constructor(base: Base, world: World, sizes: Int32Array) {
@@ -140,6 +147,11 @@ export class System {
   /** @throws {MemoryLimitError} nothing is changed then. */
   addLeaf(leaf: Leaf): void {
     const { dimension, parents, numbers, z } = leaf;
+    const inBase = this.base.stateOfSlot.length;
+    const covariances = parents.map((parent) => {
+      const slot = this.#slotOf.at(parent);
+      return slot < inBase ? this.#covarianceInBase(slot) : slot - inBase;
+    });
     const address = this.scratch(8 * (numbers.length + z.length + parents.length));
     const parentsAt = address + 8 * (numbers.length + z.length);
     writeFloats(address, numbers);
@@ -152,6 +164,8 @@ export class System {
     );
     this.#push(leaf.state, dimension);
     this.leafNumbers += numbers.length;
+    this.#leafCondition.add(leaf, covariances);
+    this.#sources = undefined;
     this.events.push({ kind: "leaf", leaf });
     this.#newestLeaf = leaf;
   }
@@ -165,6 +179,22 @@ export class System {
     }
     this.#newestLeaf = undefined;
     this.#k.dropLeaves(this.base.ledger, slots);
+    this.#leafCondition.keep(slots - this.base.stateOfSlot.length);
+    this.#sources = undefined;
+  }
+
+  /** The covariance of a state of the base under the base alone, for its leaves: one path, once. */
+  #covarianceInBase(slot: number): Float64Array {
+    const known = this.#parentCovariance.get(slot);
+    if (known) return known;
+    const d = this.dimensionAt(slot);
+    this.begin(d);
+    this.loadUnits(0, slot);
+    this.forward();
+    const covariance = copyFloats(this.#k.ledgerOwnGram(this.base.ledger) >>> 0, d * d);
+    this.clear();
+    this.#parentCovariance.set(slot, covariance);
+    return covariance;
   }
 
   begin(columns: number): void {
@@ -266,6 +296,7 @@ export class System {
     if (this.#k.settleRows(this.base.ledger, p, m) !== status.ok) return false;
     for (const { rows, measurement } of plus) for (let q = 0; q < rows.rows; q += 1) this.#owner.push(measurement);
     this.events.push({ kind: "rows", plus, minus });
+    this.#sources = undefined;
     return true;
   }
 
@@ -281,6 +312,7 @@ export class System {
       this.#owner.splice(id, 1);
     }
     this.events.push({ kind: "drop", owned });
+    this.#sources = undefined;
   }
 
   /** How many times stronger the strongest added row from `since` on made what it reads. */
@@ -288,9 +320,27 @@ export class System {
     return this.#k.strongestRow(this.base.ledger, since);
   }
 
-  /** By what factor the ledger's differences have made rounding errors larger, 1 at least. */
-  loss(): number {
-    return this.#k.ledgerLoss(this.base.ledger);
+  /** What rounding errors of blocks computed now are made of. Cost: the ledger's rows; after a removal, its removed rows cubed ÷ 6, once. */
+  sources(): ErrorSources {
+    const { ledger, condition } = this.base;
+    this.#sources ??= {
+      baseCondition: condition,
+      leafCondition: this.#leafCondition.value,
+      addedGrowth: this.#k.addedGrowth(ledger),
+      removedReach: this.#k.removedReach(ledger),
+      removedGrowth: this.#k.removedGrowth(ledger),
+    };
+    return this.#sources;
+  }
+
+  /** A bound on the relative error of blocks computed now, to first order; see `bound.ts`. */
+  bound(): number {
+    return firstOrderBound(this.sources());
+  }
+
+  /** By what factor, at most, added rows from `since` on have made anything smaller. While nothing is removed. */
+  owedGrowth(since: number): number {
+    return this.#k.owedGrowth(this.base.ledger, since);
   }
 
   logDeterminant(): number {
@@ -305,6 +355,8 @@ export class System {
     this.#owner.length = 0;
     this.events.length = 0;
     this.leafNumbers = 0;
+    this.#leafCondition.keep(0);
+    this.#sources = undefined;
     this.#newestLeaf = undefined;
   }
 

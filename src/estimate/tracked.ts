@@ -33,12 +33,13 @@ class Room {
   }
 }
 
-/** Kept numbers lose as many digits as the share of what held a state that a removal leaves is small: six here, which leaves ten. */
-const WEAK_REMOVAL = 1e-6;
+/** Kept numbers lose as many digits as a removal makes states weaker: six here, which leaves ten. */
+const WEAKENED = 1e6;
 
 /** Kept numbers as they were saved, in order of arrival. */
 export interface SavedTracked {
   readonly ratio: number;
+  readonly error: number;
   /** Undefined when they have to be computed afresh. */
   readonly numbers:
     | {
@@ -77,6 +78,8 @@ export class Tracked {
   valid = false;
   /** Largest ratio of a block's past trace to its trace now: what subtraction may have cost in digits. */
   ratio = 1;
+  /** The largest bound under which any part of the numbers was computed, relative to the largest trace that a block has had since. */
+  error = 0;
 
   /** Whether the numbers include all rows and slots. */
   isCurrent(system: System, column: number): boolean {
@@ -84,6 +87,10 @@ export class Tracked {
   }
   get slots(): number {
     return this.#slots;
+  }
+  /** Added rows that the numbers include. */
+  get rows(): number {
+    return this.#rows;
   }
   /** Rows that came since. */
   owed(system: System): number {
@@ -166,6 +173,7 @@ export class Tracked {
   #end(system: System): void {
     this.#k.forgetPast(system.base.ledger, this.#arrivals.address, this.#blocks.address, this.#largest.address);
     this.ratio = 1;
+    this.error = system.bound();
     this.valid = true;
   }
 
@@ -181,6 +189,7 @@ export class Tracked {
     const wasOrder = this.#order;
     this.#place(system);
     const target = column < 0 ? -1 : system.slotOf(column);
+    this.error = Math.max(this.error, system.bound());
     const counted = k.countAdded(ledger, since + (system.added - since - rows));
     try {
       // New states first, as they stood before the rows that came since.
@@ -240,8 +249,10 @@ export class Tracked {
     const k = this.#k;
     const { ledger } = system.base;
     if (k.factorInnovation(ledger, plus, minus) !== status.ok) return false;
+    const growth = k.innovationGrowth(ledger, plus, minus);
+    this.error = Math.max(this.error, growth * system.bound());
     enter();
-    if (k.weakestInnovation(ledger, plus, minus) < WEAK_REMOVAL) {
+    if (growth > WEAKENED) {
       this.valid = false;
       return true;
     }
@@ -254,6 +265,7 @@ export class Tracked {
   /** After settling a signed batch, or dropping rows. */
   count(system: System): void {
     this.#rows = system.added;
+    this.error = Math.max(this.error, system.bound());
   }
 
   /** Whether the kept column goes over to a new state without a solve. */
@@ -413,12 +425,13 @@ export class Tracked {
 
   /** All numbers, to be brought back by `restore`: up to date or not. */
   save(): SavedTracked {
-    if (!this.valid) return { ratio: this.ratio, numbers: undefined };
+    if (!this.valid) return { ratio: this.ratio, error: this.error, numbers: undefined };
     const column = new Float64Array(this.#across * this.#order);
     for (let c = 0; c < this.#across; c += 1)
       column.set(copyFloats(this.#column.address + 8 * c * this.#lead, this.#order), c * this.#order);
     return {
       ratio: this.ratio,
+      error: this.error,
       numbers: {
         slots: this.#slots,
         rows: this.#rows,
@@ -431,8 +444,9 @@ export class Tracked {
   }
 
   /** @param system one that has the leaves and rows, in the same order, of the system that the numbers were saved with. */
-  restore(system: System, { ratio, numbers }: SavedTracked): void {
+  restore(system: System, { ratio, error, numbers }: SavedTracked): void {
     this.ratio = ratio;
+    this.error = error;
     this.valid = false;
     if (!numbers) return;
     const { slots, rows, columnState, blocks, largest, column } = numbers;

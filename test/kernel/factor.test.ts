@@ -1,5 +1,5 @@
 import fc from "fast-check";
-import { CholeskyDecomposition, inverse, Matrix } from "ml-matrix";
+import { CholeskyDecomposition, EigenvalueDecomposition, inverse, Matrix } from "ml-matrix";
 import { beforeAll, describe, expect, test } from "vitest";
 import { type RawKernel, rawKernel } from "../support/kernel.js";
 import { type LowerColumns, Pipeline, randomFrom, randomNetwork, toDense } from "../support/pipeline.js";
@@ -88,6 +88,15 @@ describe("a random network's factor", () => {
           // The estimator never overestimates; with n ≤ 4 it has tried nearly all, and in practice it is within a factor of 10.
           expect(estimate).toBeLessThanOrEqual(condition * (1 + 1e-6));
           expect(estimate).toBeGreaterThan(condition / 10);
+          // Scaled to unit diagonal: the power method stays below the largest eigenvalue λ of D A⁻¹ D; vᵀ M³ v is at most λ³ vᵀ v, and
+          // no entry of v is larger than √3. From below only chance helps: a tenth is never met by these networks.
+          const root = a.diagonal().map(Math.sqrt);
+          const scaled = new Matrix(truth.to2DArray().map((row, i) => row.map((v, j) => v * root[i]! * root[j]!)));
+          const largest = Math.max(...new EigenvalueDecomposition(scaled, { assumeSymmetric: true }).realEigenvalues);
+          const found = pipeline.scaledCondition(budget);
+          expect(found).toBe(pipeline.scaledCondition());
+          expect(found).toBeLessThanOrEqual(largest * Math.cbrt(3 * n) * (1 + 1e-6));
+          expect(found).toBeGreaterThan(largest / 10);
         }
         pipeline.release();
         expect(kernel.raw.memoryUsed!()).toBe(before);

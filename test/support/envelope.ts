@@ -133,6 +133,30 @@ export class EnvelopeCholesky {
     }
   }
 
+  /** Diagonal blocks of the inverse of these sizes, row-major, each entry rounded to double: products of the columns of L⁻¹. Dense. */
+  inverseBlocks(sizes: readonly number[]): Float64Array[] {
+    const n = this.order;
+    const L = this.#factor;
+    const X = new Pairs(n * n); // column j at j n
+    for (let j = 0; j < n; j += 1) {
+      X.hi[j * n + j] = 1;
+      for (let i = j; i < n; i += 1) {
+        const from = Math.max(this.#first[i]!, j);
+        X.set(j * n + i, divide(lessDot(X.get(j * n + i), L, this.#base[i]! + from, X, j * n + from, i - from), this.#diagonal(i)));
+      }
+    }
+    let first = 0;
+    return sizes.map((d) => {
+      const block = Float64Array.from({ length: d * d }, (_, k) => {
+        const [a, b] = [first + (k % d), first + Math.floor(k / d)];
+        const from = Math.max(a, b);
+        return -lessDot(zero, X, a * n + from, X, b * n + from, n - from)[0];
+      });
+      first += d;
+      return block;
+    });
+  }
+
   /** The diagonal of the inverse, each entry rounded to double: the recursion of Takahashi, Fagan, Chen (1973) over the envelope,
    *  Z[i, j] = −Σ_k Z[i, k] L[k, j] / L[j, j], Z[j, j] = (1 / L[j, j] − Σ_k Z[k, j] L[k, j]) / L[j, j]. */
   inverseDiagonal(): Float64Array {

@@ -157,6 +157,20 @@ export class Pipeline {
     return this.raw.reciprocalCondition!(this.factor, this.columnStart, this.rowIndex, this.values);
   }
 
+  scaledCondition(budget = Number.POSITIVE_INFINITY): number {
+    const { raw, matrix } = this;
+    const diagonal = this.keep(Float64Array.from(this.order(), (j) => matrix.values[matrix.columnPointers[j]!]!));
+    const job = raw.scaledConditionBegin!(this.factor, diagonal);
+    runSlices(
+      (b) => raw.scaledConditionAdvance!(job, b),
+      () => raw.scaledConditionProgress!(job),
+      budget,
+    );
+    const estimate = raw.scaledConditionResult!(job);
+    raw.scaledConditionRelease!(job);
+    return estimate;
+  }
+
   release(): void {
     this.raw.factorRelease!(this.factor);
     this.raw.symbolicRelease!(this.symbolic);
