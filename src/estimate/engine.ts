@@ -61,8 +61,8 @@ const MOST_ROWS = 192;
 const SUSPICIOUS_LOSS = 1e8;
 /** A pivot that elimination has left this much smaller than its diagonal entry may be rounding alone: 500 ε. */
 const SUSPICIOUS_SPREAD = 1e13;
-/** Bounds below this are never a reason to keep an old base. Errors themselves are mostly a hundredth of their bounds; a chain on one prior
- *  passes it at a few hundred poses, a heavy patrol at some 10 000. */
+/** Bounds below this are never a reason to keep an old base: errors themselves are mostly a hundredth of their bounds. That of a heavy patrol
+ *  passes it at some 10 000 poses. */
 const HARMLESS = 1e-8;
 
 /** Nanoseconds of work asked for in one go while a budget of time is spent: the most by which a slice may pass it. */
