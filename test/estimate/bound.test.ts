@@ -21,7 +21,7 @@ beforeAll(initFacade);
 const networks = kernelBuild === "plain" && !("window" in globalThis) ? 1000 : 100;
 
 describe.each(["all", "none"] as const)("random networks with weights up to 12 orders of magnitude apart, track %s", (track) => {
-  test(`the bound holds in every answer of ${networks}, over 12 commits of arrivals, withdrawals and replacements`, () => {
+  test(`the bound holds in every answer of ${networks}, over 12 commits of arrivals, withdrawals, replacements and forgotten states`, () => {
     const broken: Comparison[] = [];
     let answers = 0;
     let sharp = 0;
