@@ -48,3 +48,7 @@ export {
   innovationGrowth,
 } from "./ledger/facts";
 export { householderScratch, triangularize } from "./dense/householder";
+export { rowPlanCreate, rowPlanRelease } from "./symbolic/row-plan";
+export {
+  orthogonalBytes, orthogonalBegin, orthogonalAdvance, orthogonalProgress, orthogonalRelease, orthogonalPivot, orthogonalPivotSize, orthogonalSolution,
+} from "./factor/orthogonal";

@@ -47,7 +47,18 @@ export interface KernelExports {
   factorRelease(factor: number): void;
   logDeterminant(factor: number): number;
   pivotSpread(factor: number, diagonal: number): number;
-  reciprocalCondition(factor: number, columnStart: number, rowIndex: number, values: number): number;
+  reciprocalCondition(factor: number, columnStart: number, rowIndex: number, values: number, scaled: number): number;
+
+  rowPlanCreate(symbolic: number, rows: number, rowStart: number, column: number): number;
+  rowPlanRelease(plan: number): void;
+  orthogonalBytes(plan: number): number;
+  orthogonalBegin(factor: number, plan: number, values: number, right: number): number;
+  orthogonalAdvance(job: number, budget: number): number;
+  orthogonalProgress(job: number): number;
+  orthogonalPivot(job: number): number;
+  orthogonalPivotSize(job: number): number;
+  orthogonalSolution(job: number, out: number): number;
+  orthogonalRelease(job: number): void;
 
   scaledConditionBegin(factor: number, diagonal: number): number;
   scaledConditionAdvance(job: number, budget: number): number;

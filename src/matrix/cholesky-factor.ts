@@ -3,7 +3,7 @@ import { status } from "../../bindings/kernel.js";
 import { kernel } from "../../bindings/loader.js";
 import { bytesAvailable, copyFloats, withLoan, writeFloats } from "../../bindings/memory.js";
 import { runSteps, runStepsInSlices, type SliceOptions, type Steps } from "../../bindings/slices.js";
-import { BusyError, MemoryLimitError, NotPositiveDefiniteError, PatternMismatchError } from "../errors.js";
+import { BusyError, MemoryLimitError, NotPositiveDefiniteError, PatternMismatchError, RowFactorError } from "../errors.js";
 import { finiteNumbersOf, indicesOf, requireIndex, requireKnownOptions, requireLength, requireWord } from "../support/checks.js";
 import { requirePositiveDiagonal } from "./diagonal.js";
 import { diagonalSteps, factorPatternSteps, matrixPatternSteps } from "./inverse-steps.js";
@@ -25,11 +25,23 @@ export interface FactorStatistics {
   readonly bytes: number;
   /** How the order of elimination was found. */
   readonly ordering: OrderingName;
+  /** How measurement rows became the factor; left out when a matrix was given. */
+  readonly rows?: RowStatistics;
 }
 
-/** Kernel objects that a factor takes over, and the matrix whose pattern they have. */
-interface FactorParts {
-  matrix: SymmetricMatrix;
+/** By which way rows became a factor. */
+export interface RowStatistics {
+  /** `"information"`: Cholesky of JᵀWJ; `"orthogonal"`: Householder reflections of the rows. */
+  readonly route: "information" | "orthogonal";
+  /** Why that one, in a sentence. */
+  readonly because: string;
+  /** Rows that were left out because their weight is zero, ascending. */
+  readonly ignored: readonly number[];
+}
+
+/** Kernel objects that a factor takes over, and the pattern of its matrix. */
+export interface FactorParts {
+  pattern: Pattern;
   symbolic: number;
   factor: number;
   /** The matrix in kernel memory, and room for the values of the next one. */
@@ -70,10 +82,9 @@ export class CholeskyFactor {
   #readers = 0;
 
   /** @internal */
-  constructor({ matrix, symbolic, factor, columnStart, rowIndex, values, spareValues, free, statistics }: FactorParts) {
-    const { order, columnPointers, rowIndices } = matrix;
-    this.#pattern = { order, columnPointers, rowIndices };
-    this.#factor = { order, symbolic, handle: new Handle(this, NAME, factor, free) };
+  constructor({ pattern, symbolic, factor, columnStart, rowIndex, values, spareValues, free, statistics }: FactorParts) {
+    this.#pattern = pattern;
+    this.#factor = { order: pattern.order, symbolic, handle: new Handle(this, NAME, factor, free) };
     this.#columnStart = columnStart;
     this.#rowIndex = rowIndex;
     this.#values = values;
@@ -213,8 +224,8 @@ export class CholeskyFactor {
   reciprocalCondition(): number {
     const address = this.#factor.handle.address;
     if (this.order === 0) return 1;
-    const result = kernel().reciprocalCondition(address, this.#columnStart, this.#rowIndex, this.#values);
-    if (result < 0) throw new MemoryLimitError("The workspace of the condition estimate", 64 * this.order, bytesAvailable());
+    const result = kernel().reciprocalCondition(address, this.#columnStart, this.#rowIndex, this.#values, 0);
+    if (result < 0) throw new MemoryLimitError("The workspace of the condition estimate", 72 * this.order, bytesAvailable());
     return result;
   }
 
@@ -222,12 +233,14 @@ export class CholeskyFactor {
    * Factors another matrix with the same pattern in place of this one: no analysis, no allocation in the kernel.
    * @throws {PatternMismatchError | NotPositiveDefiniteError} the factor then still is that of the matrix before.
    * @throws {BusyError} while an asynchronous call reads the factor.
+   * @throws {RowFactorError} on a factor that the orthogonal route made of rows.
    * Cost: the numeric factorization; twice that when it fails.
    */
   refactor(matrix: SymmetricMatrix): void {
     const k = kernel();
     const address = this.#factor.handle.address;
     if (this.#readers > 0) throw new BusyError(NAME);
+    if (this.statistics.rows?.route === "orthogonal") throw new RowFactorError();
     requireSamePattern(this.#pattern, matrix);
     requirePositiveDiagonal(matrix);
     writeFloats(this.#spareValues, matrix.values);

@@ -154,7 +154,7 @@ export class Pipeline {
   }
 
   reciprocalCondition(): number {
-    return this.raw.reciprocalCondition!(this.factor, this.columnStart, this.rowIndex, this.values);
+    return this.raw.reciprocalCondition!(this.factor, this.columnStart, this.rowIndex, this.values, 0);
   }
 
   scaledCondition(budget = Number.POSITIVE_INFINITY): number {
