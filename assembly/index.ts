@@ -24,9 +24,12 @@ export { releaseSymbolic as symbolicRelease } from "./symbolic/symbolic";
 export {
   symbolicOrder, symbolicNonzeros, symbolicFlops, symbolicSupernodes, symbolicBlocks, symbolicOrdering, symbolicBytes, factorBytes, inverseBytes,
 } from "./symbolic/facts";
-export { factorCreate, factorRelease, factorBegin, factorAdvance, factorProgress, factorPivot, logDeterminant, pivotSpread } from "./factor/cholesky";
+export {
+  factorCreate, factorRelease, factorBegin, factorAdvance, factorProgress, factorPivot, logDeterminant, pivotSpread, weakestUnknown,
+} from "./factor/cholesky";
 export { solveBegin, solveAdvance, solveProgress, solveRelease } from "./solve/solve";
 export { inverseEntries } from "./solve/entries";
+export { inverseBlock } from "./solve/block";
 export { inverseBegin, inverseAdvance, inverseProgress, inverseRelease, inverseDiagonal } from "./inverse/selected-inverse";
 export { inverseOnMatrix, inverseOnFactor, inverseFactorColumns, factorEntries } from "./inverse/pattern";
 export { reciprocalCondition } from "./condition";

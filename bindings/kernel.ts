@@ -47,6 +47,7 @@ export interface KernelExports {
   factorRelease(factor: number): void;
   logDeterminant(factor: number): number;
   pivotSpread(factor: number, diagonal: number): number;
+  weakestUnknown(factor: number, diagonal: number): number;
   reciprocalCondition(factor: number, columnStart: number, rowIndex: number, values: number, scaled: number): number;
 
   rowPlanCreate(symbolic: number, rows: number, rowStart: number, column: number): number;
@@ -71,6 +72,7 @@ export interface KernelExports {
   solveProgress(job: number): number;
   solveRelease(job: number): void;
   inverseEntries(factor: number, rows: number, columns: number, count: number, out: number): number;
+  inverseBlock(factor: number, unknowns: number, count: number, out: number): number;
 
   inverseBegin(factor: number, keepPanels: number): number;
   inverseAdvance(inverse: number, budget: number): number;

@@ -135,6 +135,17 @@ export class EmptyRowError extends SigmatideError {
   }
 }
 
+/** A column of a Jacobian whose squares leave the range of f64. */
+export class ColumnRangeError extends SigmatideError {
+  constructor(column: number, square: number) {
+    super(
+      "COLUMN_RANGE",
+      `The squares of column ${column} of the weighted rows add up to ${square}, out of the range of f64: take another unit for that unknown.`,
+      { column, square },
+    );
+  }
+}
+
 /** `refactor` was called on a factor that never was a matrix's. */
 export class RowFactorError extends SigmatideError {
   constructor() {

@@ -1,12 +1,13 @@
 // From measurement rows to a factor of JᵀWJ, by one of two routes, and to the least-squares solution.
 import { status } from "../../bindings/kernel.js";
 import { kernel } from "../../bindings/loader.js";
-import { addressOrThrow, bytesAvailable, copyFloats, Loan, requireMemory } from "../../bindings/memory.js";
+import { addressOrThrow, bytesAvailable, copyFloats, Loan, requireMemory, withLoan } from "../../bindings/memory.js";
 import { runSteps, runStepsInSlices, type SliceOptions, type Steps } from "../../bindings/slices.js";
-import { MemoryLimitError, NotPositiveDefiniteError, RankDeficientError } from "../errors.js";
+import { ColumnRangeError, MemoryLimitError, NotPositiveDefiniteError, RankDeficientError } from "../errors.js";
 import { finiteNumbersOf, requireKnownOptions, requireLength, requireWord } from "../support/checks.js";
 import { ANALYSIS_SHARE } from "./analysis-steps.js";
 import { CholeskyFactor, type FactorParts, type RowStatistics } from "./cholesky-factor.js";
+import type { LowerColumns } from "./compress.js";
 import { choleskySteps, factorRoomSteps } from "./factor-room.js";
 import { normalEquations } from "./normal-equations.js";
 import { type CheckedOptions, checkOptions, type FactorizeOptions, factorizeOptionNames } from "./options.js";
@@ -40,6 +41,16 @@ export interface LeastSquares {
  *  the relative error of the worst variance. */
 const LARGEST_LOSS = 1e-9;
 
+/** Rows whose condition × 2.2e-16, with columns of norm 1, reaches this determine some unknown by rounding noise alone. Measured: at least 1.7 on
+ *  nets, patrols, helices, chains and grids without their priors and on 2 000 random difference networks; at most 0.03 on networks that are
+ *  determined, even with weights over 30 orders of magnitude. */
+const NO_DIGITS = 0.25;
+
+/** A condition of JᵀWJ up to here is told well enough by its Cholesky factor, and far from that of rows without rank. */
+const KNOWN_CONDITION = 1e12;
+
+const SMALLEST_NORMAL = 2 ** -1022;
+
 const routes = ["automatic", "information", "orthogonal"];
 const optionNames = [...factorizeOptionNames, "weights", "route"];
 
@@ -49,8 +60,9 @@ const optionNames = [...factorizeOptionNames, "weights", "route"];
  * @param options weights, route, ordering and blockSizes; see `FactorizeRowsOptions`. `factor.statistics.rows` tells the route taken, why, and
  *   the rows left out.
  * @throws {NegativeWeightError | NotFiniteError | LengthError | IndexRangeError | OptionError}
- * @throws {EmptyRowError | EmptyColumnError | TooFewRowsError} before any work.
- * @throws {RankDeficientError} an unknown that the rows do not determine: its diagonal entry of R is below 16 × 2.2e-16 × the size of its column.
+ * @throws {EmptyRowError | EmptyColumnError | TooFewRowsError | ColumnRangeError} before any work.
+ * @throws {RankDeficientError} an unknown that the rows do not determine: its diagonal entry of R is below 16 × 2.2e-16 × the size of its column, or
+ *   the condition of √W J with columns of norm 1 is about 1e15 or more.
  * @throws {NotPositiveDefiniteError} the same by the route `"information"`.
  * @throws {MemoryLimitError} before the numbers are started.
  * Cost: the factorization; the orthogonal route takes 3 to 5 times as long as Cholesky, and `"automatic"` tries Cholesky first.
@@ -129,6 +141,7 @@ interface RowFactor {
 
 function* rowSteps({ rows, options, route }: CheckedRows, residual?: Float64Array): Steps<RowFactor> {
   const matrix = normalEquations(rows.jacobian, rows.weights);
+  const squares = squaresOf(matrix, rows);
   const room = yield* factorRoomSteps(matrix, options);
   let complete = false;
   try {
@@ -136,42 +149,74 @@ function* rowSteps({ rows, options, route }: CheckedRows, residual?: Float64Arra
       complete = true;
       return new CholeskyFactor({ ...room, statistics: { ...room.statistics, rows: { route: by, because, ignored: rows.ignored } } });
     };
-    let because = "the orthogonal route was asked for";
-    if (route !== "orthogonal") {
-      const share = route === "automatic" ? (1 + ANALYSIS_SHARE) / 2 : 1;
-      const allFinite = matrix.values.every(Number.isFinite);
-      const failed = allFinite ? yield* choleskySteps(room, ANALYSIS_SHARE, share) : 1;
-      if (route === "information") {
-        if (failed > 0) throw new NotPositiveDefiniteError(failed - 1, allFinite ? kernel().factorPivot(room.factor) : Number.NaN);
-        return { factor: finish("information", "the information route was asked for") };
-      }
-      const verdict = failed > 0 ? undefined : scaledCondition(room);
-      if (verdict !== undefined && verdict * Number.EPSILON <= LARGEST_LOSS) {
-        return {
-          factor: finish(
-            "information",
-            `JᵀWJ scaled to unit diagonal has a condition of about ${verdict.toExponential(1)}, which leaves digits enough`,
-          ),
-        };
-      }
-      because =
-        verdict === undefined
-          ? "JᵀWJ is not safely positive definite in f64"
-          : `JᵀWJ scaled to unit diagonal has a condition of about ${verdict.toExponential(1)}, which costs too many digits`;
+    if (route === "information") {
+      yield* informationSteps(room, 1);
+      return { factor: finish("information", "the information route was asked for") };
     }
-    const solution = yield* orthogonalSteps(room, rows, residual, route === "automatic" ? (1 + ANALYSIS_SHARE) / 2 : ANALYSIS_SHARE);
+    const share = route === "automatic" ? (1 + ANALYSIS_SHARE) / 2 : ANALYSIS_SHARE;
+    const condition = route === "automatic" ? yield* conditionSteps(room, share) : undefined;
+    if (condition !== undefined && condition * Number.EPSILON <= LARGEST_LOSS)
+      return { factor: finish("information", `${conditionText(condition)}, which leaves digits enough`) };
+    const solution = yield* orthogonalSteps(room, rows, residual, share);
+    if (condition === undefined || condition > KNOWN_CONDITION) requireDetermined(room, squares);
+    const because =
+      route === "orthogonal"
+        ? "the orthogonal route was asked for"
+        : condition === undefined
+          ? "JᵀWJ is not safely positive definite in f64"
+          : `${conditionText(condition)}, which costs too many digits`;
     return { factor: finish("orthogonal", because), solution };
   } finally {
     if (!complete) room.free();
   }
 }
 
-/** Of the matrix scaled to unit diagonal; 1 for order 0. */
+const conditionText = (condition: number): string => `JᵀWJ scaled to unit diagonal has a condition of about ${condition.toExponential(1)}`;
+
+/** Cholesky of the matrix.  @throws {NotPositiveDefiniteError} */
+function* informationSteps(room: FactorParts, to: number): Steps<void> {
+  const failed = yield* choleskySteps(room, ANALYSIS_SHARE, to);
+  if (failed > 0) throw new NotPositiveDefiniteError(failed - 1, kernel().factorPivot(room.factor));
+}
+
+/** The condition of the matrix scaled to unit diagonal, by way of its Cholesky factor; undefined when that cannot be had. */
+function* conditionSteps(room: FactorParts, to: number): Steps<number | undefined> {
+  const failed = yield* choleskySteps(room, ANALYSIS_SHARE, to);
+  return failed > 0 ? undefined : scaledCondition(room);
+}
+
+/** Of the matrix scaled to unit diagonal, by the factor at hand; 1 for order 0. */
 function scaledCondition({ pattern, factor, columnStart, rowIndex, values }: FactorParts): number {
   if (pattern.order === 0) return 1;
   const reciprocal = kernel().reciprocalCondition(factor, columnStart, rowIndex, values, 1);
   if (reciprocal < 0) throw new MemoryLimitError("The workspace of the condition estimate", 72 * pattern.order, bytesAvailable());
   return 1 / reciprocal;
+}
+
+/** The rows' own condition, columns scaled to norm 1, is the root of the matrix's.  @throws {RankDeficientError} when rounding the rows could
+ *  leave an unknown free, naming the one of which the least is left. */
+function requireDetermined(room: FactorParts, squares: Float64Array): void {
+  if (Math.sqrt(scaledCondition(room)) * Number.EPSILON < NO_DIGITS) return;
+  const k = kernel();
+  withLoan("The pivots", (loan) => {
+    const address = loan.floats(squares);
+    const unknown = k.weakestUnknown(room.factor, address);
+    const size = Math.sqrt(squares[unknown]!);
+    throw new RankDeficientError(unknown, size / Math.sqrt(k.pivotSpread(room.factor, address)), size);
+  });
+}
+
+/** The diagonal of JᵀWJ: the squared norms of the columns of √W J.
+ *  @throws {RankDeficientError} a column of zeros.  @throws {ColumnRangeError} one whose squares f64 cannot hold. */
+function squaresOf({ order, columnPointers, values }: LowerColumns, { jacobian }: WeightedRows): Float64Array {
+  const squares = Float64Array.from({ length: order }, (_, j) => values[columnPointers[j]!]!);
+  for (const [j, square] of squares.entries()) {
+    if (square >= SMALLEST_NORMAL && square < Number.POSITIVE_INFINITY) continue;
+    if (jacobian.values.subarray(jacobian.columnPointers[j], jacobian.columnPointers[j + 1]).every((v) => v === 0))
+      throw new RankDeficientError(j, 0, 0);
+    throw new ColumnRangeError(j, square);
+  }
+  return squares;
 }
 
 /** Fills the factor from the rows. @returns the least-squares solution when there is a right-hand side. */
