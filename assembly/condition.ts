@@ -1,5 +1,4 @@
-/** An estimate of the reciprocal condition number 1 ÷ (‖A‖₁ ‖A⁻¹‖₁) from a few solves, of A or of A scaled to unit diagonal. The
- *  scaled one tells how many digits Cholesky costs: units of the unknowns do not enter it (van der Sluis 1969, Numer. Math. 14).
+/** An estimate of the reciprocal condition number 1 ÷ (‖A‖₁ ‖A⁻¹‖₁) from a few solves.
  *  The block form with two columns of Higham and Tisseur's estimator of ‖A⁻¹‖₁; it never overestimates, and is seldom more than a
  *  factor of 3 below.
  *  Source: Higham, Tisseur, "A block algorithm for matrix 1-norm estimation, with an application to 1-norm pseudospectra", SIAM J.
@@ -13,12 +12,12 @@ const ROUNDS = 5;
 /** Unit vectors tried so far: two a round. */
 const TRIED = 2 * ROUNDS;
 
-/** ‖D⁻¹ A D⁻¹‖₁ of the lower triangle by columns. d f64[n], caller's numbering; sums f64[n] is workspace. */
-function norm(n: i32, columnStart: usize, rowIndex: usize, values: usize, d: usize, sums: usize): f64 {
+/** ‖A‖₁ of the lower triangle by columns. sums f64[n] is workspace. */
+function norm(n: i32, columnStart: usize, rowIndex: usize, values: usize, sums: usize): f64 {
   memory.fill(sums, 0, <usize>n << 3);
   for (let j = 0; j < n; ++j) {
     for (let p = i32At(columnStart, j), end = i32At(columnStart, j + 1); p < end; ++p) {
-      const i = i32At(rowIndex, p), a = Math.abs(f64At(values, p)) / f64At(d, i) / f64At(d, j);
+      const i = i32At(rowIndex, p), a = Math.abs(f64At(values, p));
       addF64(sums, j, a);
       if (i != j) addF64(sums, i, a);
     }
@@ -28,19 +27,10 @@ function norm(n: i32, columnStart: usize, rowIndex: usize, values: usize, d: usi
   return largest;
 }
 
-/** X := D A⁻¹ D X for two columns side by side, elimination order but for d. */
-function solveTwo(f: Factor, x: usize, d: usize, buffer: usize): void {
-  scaleTwo(f, x, d);
+/** X := A⁻¹ X for two columns side by side, elimination order. */
+function solveTwo(f: Factor, x: usize, buffer: usize): void {
   forwardSolve(f, x, 2, 0, 0, f.symbolic.supernodes, buffer);
   backwardSolve(f, x, 2, 0, 0, f.symbolic.supernodes, buffer);
-  scaleTwo(f, x, d);
-}
-function scaleTwo(f: Factor, x: usize, d: usize): void {
-  const s = f.symbolic;
-  for (let k = 0; k < s.n; ++k) {
-    const at = atF64(x, 2 * k);
-    v128.store(at, f64x2.mul(v128.load(at), v128.load64_splat(atF64(d, i32At(s.order, k)))));
-  }
 }
 
 // The two columns lie side by side: entry k of column c is number 2 k + c.
@@ -70,19 +60,16 @@ function scatterSigns(n: i32, x: usize, c: i32, scale: f64, state: u32): u32 {
   return state;
 }
 
-/** 1 ÷ (‖A‖₁ × estimate of ‖A⁻¹‖₁) for a complete factor of A (lower triangle by columns, diagonal first, caller's numbering);
- *  `scaled`: of A scaled to unit diagonal, which must then be positive.
+/** 1 ÷ (‖A‖₁ × estimate of ‖A⁻¹‖₁) for a complete factor of A (lower triangle by columns, caller's numbering).
  *  0 for order 0; −1 when memory runs out.  Cost: at most ten solves with two columns. */
-export function reciprocalCondition(f: Factor, columnStart: usize, rowIndex: usize, values: usize, scaled: bool): f64 {
+export function reciprocalCondition(f: Factor, columnStart: usize, rowIndex: usize, values: usize): f64 {
   const s = f.symbolic, n = s.n;
   if (n == 0) return 0;
-  const x = allocateArray(7 * <f64>n, 3), buffer = allocateArray(2 * <f64>s.deepest, 3);
+  const x = allocateArray(6 * <f64>n, 3), buffer = allocateArray(2 * <f64>s.deepest, 3);
   let result: f64 = -1;
   if (x && buffer) {
-    const d = atF64(x, 6 * n);
-    for (let j = 0; j < n; ++j) setF64(d, j, scaled ? Math.sqrt(f64At(values, i32At(columnStart, j))) : 1);
-    const ofA = norm(n, columnStart, rowIndex, values, d, x);
-    result = 1 / (ofA * inverseNorm(f, x, d, buffer));
+    const ofA = norm(n, columnStart, rowIndex, values, x);
+    result = 1 / (ofA * inverseNorm(f, x, buffer));
   }
   release(x);
   release(buffer);
@@ -90,7 +77,7 @@ export function reciprocalCondition(f: Factor, columnStart: usize, rowIndex: usi
 }
 
 /** The estimate of ‖A⁻¹‖₁. x f64[6 n]: three pairs of columns. */
-function inverseNorm(f: Factor, x: usize, d: usize, buffer: usize): f64 {
+function inverseNorm(f: Factor, x: usize, buffer: usize): f64 {
   const n = f.symbolic.n, signs = atF64(x, 2 * n), signsBefore = atF64(x, 4 * n);
   let state: u32 = 2463534242, estimate: f64 = 0, bestUnit = -1, tried = 0;
   for (let k = 0; k < n; ++k) setF64(x, 2 * k, 1 / <f64>n);
@@ -100,7 +87,7 @@ function inverseNorm(f: Factor, x: usize, d: usize, buffer: usize): f64 {
   const history = memory.data(4 * TRIED, 4);
   let unit0 = -1, unit1 = -1;
   for (let round = 0; round <= ROUNDS; ++round) {
-    solveTwo(f, x, d, buffer);
+    solveTwo(f, x, buffer);
     const sum0 = columnSum(n, x, 0), sum1 = columnSum(n, x, 1), largest = Math.max(sum0, sum1);
     if (round > 0 && largest <= estimate) return estimate;
     estimate = largest;
@@ -120,7 +107,7 @@ function inverseNorm(f: Factor, x: usize, d: usize, buffer: usize): f64 {
     }
     memory.copy(signsBefore, signs, <usize>n << 4);
     memory.copy(x, signs, <usize>n << 4);
-    solveTwo(f, x, d, buffer);
+    solveTwo(f, x, buffer);
     // The two rows of largest magnitude that were not tried yet become the next unit vectors.
     let first = -1, second = -1, firstSize: f64 = -1, secondSize: f64 = -1, largestSize: f64 = 0;
     for (let k = 0; k < n; ++k) {

@@ -30,6 +30,7 @@ export {
 export { solveBegin, solveAdvance, solveProgress, solveRelease } from "./solve/solve";
 export { inverseEntries } from "./solve/entries";
 export { inverseBlock } from "./solve/block";
+export { squaresBegin, squaresAdvance, squaresProgress, squaresRelease } from "./solve/squares";
 export { inverseBegin, inverseAdvance, inverseProgress, inverseRelease, inverseDiagonal } from "./inverse/selected-inverse";
 export { inverseOnMatrix, inverseOnFactor, inverseFactorColumns, factorEntries } from "./inverse/pattern";
 export { reciprocalCondition } from "./condition";

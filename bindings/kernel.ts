@@ -48,7 +48,7 @@ export interface KernelExports {
   logDeterminant(factor: number): number;
   pivotSpread(factor: number, diagonal: number): number;
   weakestUnknown(factor: number, diagonal: number): number;
-  reciprocalCondition(factor: number, columnStart: number, rowIndex: number, values: number, scaled: number): number;
+  reciprocalCondition(factor: number, columnStart: number, rowIndex: number, values: number): number;
 
   rowPlanCreate(symbolic: number, rows: number, rowStart: number, column: number): number;
   rowPlanRelease(plan: number): void;
@@ -73,6 +73,10 @@ export interface KernelExports {
   solveRelease(job: number): void;
   inverseEntries(factor: number, rows: number, columns: number, count: number, out: number): number;
   inverseBlock(factor: number, unknowns: number, count: number, out: number): number;
+  squaresBegin(factor: number, diagonal: number): number;
+  squaresAdvance(job: number, budget: number): number;
+  squaresProgress(job: number): number;
+  squaresRelease(job: number): void;
 
   inverseBegin(factor: number, keepPanels: number): number;
   inverseAdvance(inverse: number, budget: number): number;

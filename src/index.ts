@@ -14,7 +14,13 @@ export {
 } from "./estimate/estimate.js";
 export type { Evaluation } from "./estimate/evaluate.js";
 export type { Linearization, MeasurementInput, StateId } from "./estimate/rows.js";
-export { CholeskyFactor, type FactorStatistics, type RowStatistics, type SelectedInverseOptions } from "./matrix/cholesky-factor.js";
+export {
+  CholeskyFactor,
+  type FactorStatistics,
+  type InverseDiagonalOptions,
+  type RowStatistics,
+  type SelectedInverseOptions,
+} from "./matrix/cholesky-factor.js";
 export { factorize, factorizeAsync } from "./matrix/factorize.js";
 export {
   type FactorizeRowsOptions,

@@ -6,7 +6,7 @@ import { runSteps, runStepsInSlices, type SliceOptions, type Steps } from "../..
 import { BusyError, MemoryLimitError, NotPositiveDefiniteError, PatternMismatchError, RowFactorError } from "../errors.js";
 import { finiteNumbersOf, indicesOf, requireIndex, requireKnownOptions, requireLength, requireWord } from "../support/checks.js";
 import { requirePositiveDiagonal } from "./diagonal.js";
-import { diagonalSteps, factorPatternSteps, matrixPatternSteps } from "./inverse-steps.js";
+import { diagonalSteps, factorPatternSteps, matrixPatternSteps, squaredDiagonalSteps } from "./inverse-steps.js";
 import type { KernelFactor } from "./kernel-factor.js";
 import type { OrderingName } from "./options.js";
 import { solveSteps } from "./solve-steps.js";
@@ -54,6 +54,12 @@ export interface FactorParts {
 }
 
 type Pattern = Pick<SymmetricMatrix, "order" | "columnPointers" | "rowIndices">;
+
+export interface InverseDiagonalOptions {
+  /** `"selected"`, the default: by the selected inverse. `"squares"`: each entry as ‖L⁻¹e‖², in which nothing cancels: where the condition is bad it keeps
+   *  digits that the other loses, at the cost of a forward solve over each unknown's path in the elimination tree. */
+  method?: "selected" | "squares" | undefined;
+}
 
 export interface SelectedInverseOptions {
   /** `"factor"`, the default: all entries on the pattern of L; `"matrix"`: those on the matrix's own pattern. */
@@ -189,21 +195,28 @@ export class CholeskyFactor {
 
   /**
    * The diagonal of the inverse: the variances when A is an information matrix, in (unit of the unknown)².
-   * @throws {MemoryLimitError}
+   * @param options method: `"selected"`, the default, or `"squares"`; see `InverseDiagonalOptions`.
+   * @throws {MemoryLimitError | OptionError}
    * Cost: one selected inverse, about twice the factorization, the first time; a copy after. Source: Takahashi, Fagan, Chen (1973).
    */
-  inverseDiagonal(): Float64Array {
-    this.#factor.handle.address;
-    this.#diagonal ??= runSteps(diagonalSteps(this.#factor));
-    return this.#diagonal.slice();
+  inverseDiagonal(options: InverseDiagonalOptions = {}): Float64Array {
+    return runSteps(this.#diagonalSteps("inverseDiagonal", options, [])).slice();
   }
 
   /** `inverseDiagonal` in slices; see `factorizeAsync` for signal and progress. */
-  async inverseDiagonalAsync(options: SliceOptions = {}): Promise<Float64Array> {
-    requireKnownOptions("inverseDiagonalAsync", options, ["signal", "onProgress"]);
+  async inverseDiagonalAsync(options: InverseDiagonalOptions & SliceOptions = {}): Promise<Float64Array> {
+    const diagonal = await this.#inSlices(this.#diagonalSteps("inverseDiagonalAsync", options, ["signal", "onProgress"]), options);
+    return diagonal.slice();
+  }
+
+  *#diagonalSteps(name: string, options: InverseDiagonalOptions, more: readonly string[]): Steps<Float64Array> {
+    requireKnownOptions(name, options, ["method", ...more]);
+    const { method = "selected" } = options;
+    requireWord("method", method, ["selected", "squares"]);
     this.#factor.handle.address;
-    this.#diagonal ??= await this.#inSlices(diagonalSteps(this.#factor), options);
-    return this.#diagonal.slice();
+    if (method === "squares") return yield* squaredDiagonalSteps(this.#factor);
+    this.#diagonal ??= yield* diagonalSteps(this.#factor);
+    return this.#diagonal;
   }
 
   /**
@@ -244,8 +257,8 @@ export class CholeskyFactor {
   reciprocalCondition(): number {
     const address = this.#factor.handle.address;
     if (this.order === 0) return 1;
-    const result = kernel().reciprocalCondition(address, this.#columnStart, this.#rowIndex, this.#values, 0);
-    if (result < 0) throw new MemoryLimitError("The workspace of the condition estimate", 72 * this.order, bytesAvailable());
+    const result = kernel().reciprocalCondition(address, this.#columnStart, this.#rowIndex, this.#values);
+    if (result < 0) throw new MemoryLimitError("The workspace of the condition estimate", 64 * this.order, bytesAvailable());
     return result;
   }
 

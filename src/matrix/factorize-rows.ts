@@ -41,10 +41,10 @@ export interface LeastSquares {
  *  the relative error of the worst variance. */
 const LARGEST_LOSS = 1e-9;
 
-/** Rows whose condition × 2.2e-16, with columns of norm 1, reaches this determine some unknown by rounding noise alone. Measured: at least 1.7 on
- *  nets, patrols, helices, chains and grids without their priors and on 2 000 random difference networks; at most 0.03 on networks that are
+/** Rows whose condition × 2.2e-16, with columns of norm 1, reaches this determine some unknown by rounding noise alone. Measured: 0.74 or more on
+ *  nets, patrols, helices, chains and grids without their priors and on 2 000 random difference networks; at most 0.01 on networks that are
  *  determined, even with weights over 30 orders of magnitude. */
-const NO_DIGITS = 0.25;
+const NO_DIGITS = 1 / 16;
 
 /** A condition of JᵀWJ up to here is told well enough by its Cholesky factor, and far from that of rows without rank. */
 const KNOWN_CONDITION = 1e12;
@@ -62,7 +62,7 @@ const optionNames = [...factorizeOptionNames, "weights", "route"];
  * @throws {NegativeWeightError | NotFiniteError | LengthError | IndexRangeError | OptionError}
  * @throws {EmptyRowError | EmptyColumnError | TooFewRowsError | ColumnRangeError} before any work.
  * @throws {RankDeficientError} an unknown that the rows do not determine: its diagonal entry of R is below 16 × 2.2e-16 × the size of its column, or
- *   the condition of √W J with columns of norm 1 is about 1e15 or more.
+ *   the condition of √W J with columns of norm 1 is about 3e14 or more.
  * @throws {NotPositiveDefiniteError} the same by the route `"information"`.
  * @throws {MemoryLimitError} before the numbers are started.
  * Cost: the factorization; the orthogonal route takes 3 to 5 times as long as Cholesky, and `"automatic"` tries Cholesky first.
@@ -154,11 +154,11 @@ function* rowSteps({ rows, options, route }: CheckedRows, residual?: Float64Arra
       return { factor: finish("information", "the information route was asked for") };
     }
     const share = route === "automatic" ? (1 + ANALYSIS_SHARE) / 2 : ANALYSIS_SHARE;
-    const condition = route === "automatic" ? yield* conditionSteps(room, share) : undefined;
+    const condition = route === "automatic" ? yield* conditionSteps(room, squares, share) : undefined;
     if (condition !== undefined && condition * Number.EPSILON <= LARGEST_LOSS)
       return { factor: finish("information", `${conditionText(condition)}, which leaves digits enough`) };
     const solution = yield* orthogonalSteps(room, rows, residual, share);
-    if (condition === undefined || condition > KNOWN_CONDITION) requireDetermined(room, squares);
+    if (condition === undefined || condition > KNOWN_CONDITION) yield* determinedSteps(room, squares);
     const because =
       route === "orthogonal"
         ? "the orthogonal route was asked for"
@@ -180,23 +180,32 @@ function* informationSteps(room: FactorParts, to: number): Steps<void> {
 }
 
 /** The condition of the matrix scaled to unit diagonal, by way of its Cholesky factor; undefined when that cannot be had. */
-function* conditionSteps(room: FactorParts, to: number): Steps<number | undefined> {
+function* conditionSteps(room: FactorParts, squares: Float64Array, to: number): Steps<number | undefined> {
   const failed = yield* choleskySteps(room, ANALYSIS_SHARE, to);
-  return failed > 0 ? undefined : scaledCondition(room);
+  return failed > 0 ? undefined : yield* scaledConditionSteps(room, squares, to);
 }
 
-/** Of the matrix scaled to unit diagonal, by the factor at hand; 1 for order 0. */
-function scaledCondition({ pattern, factor, columnStart, rowIndex, values }: FactorParts): number {
-  if (pattern.order === 0) return 1;
-  const reciprocal = kernel().reciprocalCondition(factor, columnStart, rowIndex, values, 1);
-  if (reciprocal < 0) throw new MemoryLimitError("The workspace of the condition estimate", 72 * pattern.order, bytesAvailable());
-  return 1 / reciprocal;
+/** Of the matrix scaled to unit diagonal, by the factor at hand. */
+function* scaledConditionSteps({ pattern, factor }: FactorParts, squares: Float64Array, at: number): Steps<number> {
+  const k = kernel();
+  const what = "The condition estimate";
+  const loan = new Loan(what);
+  let job = 0;
+  try {
+    job = addressOrThrow(what, k.scaledConditionBegin(factor, loan.floats(squares)), 64 * pattern.order);
+    yield { advance: (budget) => k.scaledConditionAdvance(job, budget), progress: () => k.scaledConditionProgress(job), from: at, to: at };
+    return k.scaledConditionResult(job);
+  } finally {
+    if (job) k.scaledConditionRelease(job);
+    loan.giveBack();
+  }
 }
 
 /** The rows' own condition, columns scaled to norm 1, is the root of the matrix's.  @throws {RankDeficientError} when rounding the rows could
  *  leave an unknown free, naming the one of which the least is left. */
-function requireDetermined(room: FactorParts, squares: Float64Array): void {
-  if (Math.sqrt(scaledCondition(room)) * Number.EPSILON < NO_DIGITS) return;
+function* determinedSteps(room: FactorParts, squares: Float64Array): Steps<void> {
+  const condition = yield* scaledConditionSteps(room, squares, 1);
+  if (Math.sqrt(condition) * Number.EPSILON < NO_DIGITS) return;
   const k = kernel();
   withLoan("The pivots", (loan) => {
     const address = loan.floats(squares);

@@ -288,6 +288,8 @@ describe("on every family", () => {
       const entries = factor.inverseEntries([0, 0, 2, 5], [0, 5, 2, 2]);
       const largest = Math.max(block[0]!, block[5]!, block[10]!);
       for (const [k, at] of [0, 2, 5, 9].entries()) expect(Math.abs(block[at]! - entries[k]!)).toBeLessThan(1e-12 * largest);
+      for (const [j, v] of factor.inverseDiagonal({ method: "squares" }).entries())
+        expect(Math.abs(direct[j]! / v - 1)).toBeLessThan(tolerance);
       for (const one of [factor, blind, sliced]) one.dispose();
       expect(memoryUsage().used).toBe(used);
     },
