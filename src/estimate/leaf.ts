@@ -35,7 +35,7 @@ function splitLeaf(
   for (const rows of pool) for (const s of rows.states) if (s !== state && !states.includes(s)) states.push(s);
   const { a, m, columns, columnOf } = gather([state, ...states], pool, dimensionOf);
   const squares = new Float64Array(columns);
-  for (let k = 0; k < columns * m; k += 1) squares[Math.floor(k / m)]! += a[k]! * a[k]!;
+  for (let c = 0, k = 0; c < columns; c += 1) for (let end = k + m; k < end; k += 1) squares[c]! += a[k]! * a[k]!;
   if (m < d || !reflect(a, m, d, columns + 1, RANK_TOLERANCE)) return undefined;
 
   const numbers = new Float64Array(d * columns);
