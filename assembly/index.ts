@@ -54,5 +54,5 @@ export {
 export { householderScratch, triangularize } from "./dense/householder";
 export { rowPlanCreate, rowPlanRelease } from "./symbolic/row-plan";
 export {
-  orthogonalBytes, orthogonalBegin, orthogonalAdvance, orthogonalProgress, orthogonalRelease, orthogonalPivot, orthogonalPivotSize, orthogonalSolution,
+  orthogonalBytes, orthogonalBegin, orthogonalAdvance, orthogonalProgress, orthogonalRelease, orthogonalPivot, orthogonalSolution,
 } from "./factor/orthogonal";

@@ -53,11 +53,10 @@ export interface KernelExports {
   rowPlanCreate(symbolic: number, rows: number, rowStart: number, column: number): number;
   rowPlanRelease(plan: number): void;
   orthogonalBytes(plan: number): number;
-  orthogonalBegin(factor: number, plan: number, values: number, right: number): number;
+  orthogonalBegin(factor: number, plan: number, values: number, right: number, squares: number): number;
   orthogonalAdvance(job: number, budget: number): number;
   orthogonalProgress(job: number): number;
   orthogonalPivot(job: number): number;
-  orthogonalPivotSize(job: number): number;
   orthogonalSolution(job: number, out: number): number;
   orthogonalRelease(job: number): void;
 

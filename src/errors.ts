@@ -106,7 +106,7 @@ export class RankDeficientError extends SigmatideError {
     readonly column: number,
     /** What the rows tell of it once the unknowns eliminated before it are free to follow: its diagonal entry of R. */
     readonly remaining: number,
-    /** The size of its column of √W J. */
+    /** The norm of its column of √W J. */
     readonly size: number,
   ) {
     super(
@@ -135,12 +135,12 @@ export class EmptyRowError extends SigmatideError {
   }
 }
 
-/** A column of a Jacobian whose squares leave the range of f64. */
+/** A column of a Jacobian so large or small that products with it could leave the range of f64. */
 export class ColumnRangeError extends SigmatideError {
   constructor(column: number, square: number) {
     super(
       "COLUMN_RANGE",
-      `The squares of column ${column} of the weighted rows add up to ${square}, out of the range of f64: take another unit for that unknown.`,
+      `The squares of column ${column} of the weighted rows add up to ${square}, outside of 1e-270 to 1e270: take another unit for that unknown.`,
       { column, square },
     );
   }

@@ -4,7 +4,7 @@
  *  matrix part; what follows up to ld (right-hand sides; zeros to an even length) is carried along.
  *  Rows are sorted by where they begin: ends i32[columns], ends[j] = rows that are not zero in columns 0 … j, never falling. Where a row
  *  has not begun it holds zeros.
- *  Columns [from, to) are worked on, `from` a multiple of four, to one too or all of them; `done` rows were finished before (0 at first).
+ *  Columns [first, to) are worked on, `first` a multiple of four, to one too or all of them; `done` rows were finished before (0 at first).
  *  Returns how many are finished now. Finished row i is row i of R: it begins at column leads[i] (i32, ascending), its entries before
  *  that are without meaning. A column in which no unfinished row has an entry gives no row. After the last column, what a row that is
  *  not finished carries is what of the right-hand side no unknown explains.
@@ -28,12 +28,13 @@ import { bytes } from "./mode";
 
 /** A row stays in the pivot's place while its entry is at least this share of the column's largest: the accuracy of small rows is bounded
  *  by the reciprocal, and most exchanges are saved. */
-const SMALL = 0.25;
+const SMALL = 0.125;
 
 /** T, row-major 4 × 4; the strip's own columns of R, a row of four each; xᵀ times the strip, for the column x at hand. */
 const t = memory.data(128, 16);
 const corner = memory.data(128, 16);
 const sums = memory.data(32, 16);
+const best = memory.data(4, 4);
 
 /** Bytes of scratch: four vectors. */
 export function householderScratch(rows: i32): usize { return <usize>rows << 5; }
@@ -56,25 +57,49 @@ export function householderScratch(rows: i32): usize { return <usize>rows << 5; 
   return v128.shuffle<f64>(high, high, 1, 1);
 }
 
-/** The strip's rows p … end: takes away (entry q − 1) × w, unless q = 0, then sums (entry q) × row. Returns the largest |entry q|. */
+/** One row of the strip in passColumn: gathered from `from` for q = 0, else relieved of (entry q − 1) × w; then kept at p. */
 // @ts-ignore: decorator
-@inline function passColumn(q: i32, p: usize, end: usize, w0: v128, w1: v128): f64 {
-  let s0 = f64x2.splat(0), s1 = s0, largest = s0;
-  for (; p < end; p += 32) {
-    let low = v128.load(p), high = v128.load(p, 16);
-    if (q > 0) {
-      const before = lane(q - 1, low, high);
-      if (q == 1) { low = nmadd(before, w0, low); v128.store(p, low); }
-      high = nmadd(before, w1, high);
-      v128.store(p, high, 16);
-    }
-    const x = lane(q, low, high);
+@inline function rowLow(q: i32, p: usize, from: usize, w: v128): v128 {
+  if (q == 0) {
+    const low = v128.load(from);
+    v128.store(p, low);
+    return low;
+  }
+  let low = v128.load(p);
+  if (q == 1) { low = nmadd(lane(0, low, low), w, low); v128.store(p, low); }
+  return low;
+}
+// @ts-ignore: decorator
+@inline function rowHigh(q: i32, p: usize, from: usize, before: v128, w: v128): v128 {
+  if (q == 0) {
+    const high = v128.load(from, 16);
+    v128.store(p, high, 16);
+    return high;
+  }
+  let high = v128.load(p, 16);
+  high = nmadd(q < 3 ? lane(q - 1, before, before) : lane(2, high, high), w, high);
+  v128.store(p, high, 16);
+  return high;
+}
+
+/** The strip's rows p … end: takes away (entry q − 1) × w, or for q = 0 gathers them from rows that lie `row` bytes apart; then sums
+ *  (entry q) × row. Returns the largest |entry q|; `best` gets its row (found without a branch: where it lies is anybody's guess). */
+// @ts-ignore: decorator
+@inline function passColumn(q: i32, p: usize, end: usize, from: usize, row: usize, w0: v128, w1: v128): f64 {
+  let s0 = f64x2.splat(0), s1 = s0, largest = s0, at = i64x2.splat(p), here = at;
+  const next = i64x2.splat(32);
+  for (; p < end; p += 32, from += row) {
+    const before = v128.load(p), low = rowLow(q, p, from, w0), high = rowHigh(q, p, from, before, w1), x = lane(q, low, high);
     s0 = madd(x, low, s0);
     s1 = madd(x, high, s1);
-    largest = f64x2.pmax(largest, f64x2.abs(x));
+    const size = f64x2.abs(x), isLarger = f64x2.gt(size, largest);
+    largest = f64x2.pmax(largest, size);
+    at = v128.bitselect(here, at, isLarger);
+    here = i64x2.add(here, next);
   }
   v128.store(sums, s0);
   v128.store(sums, s1, 16);
+  store<u32>(best, i32x4.extract_lane(at, 0));
   return f64x2.extract_lane(largest, 0);
 }
 
@@ -83,7 +108,7 @@ export function householderScratch(rows: i32): usize { return <usize>rows << 5; 
  *  row on. leads[i] becomes the column, the strip's first being `column`, of its row i. Returns the rows finished.
  *  A finished row's later entries in v are zeros, so each column of V begins at its own pivot. */
 function reduceStrip(
-  cols: i32, len: i32, ends: usize, base: i32, v: usize, a: usize, row: usize, after: usize, leads: usize, column: i32,
+  cols: i32, len: i32, ends: usize, base: i32, v: usize, from: usize, strideFrom: usize, a: usize, row: usize, after: usize, leads: usize, column: i32,
 ): i32 {
   const zero = f64x2.splat(0), end = v + (<usize>len << 5);
   let r = 0, w0 = zero, w1 = zero;
@@ -91,19 +116,17 @@ function reduceStrip(
   for (let q = 0; q < cols; ++q) {
     const pivot = v + (<usize>r << 5);
     let largest: f64;
-    if (q == 0) largest = passColumn(0, pivot, end, w0, w1);
-    else if (q == 1) largest = passColumn(1, pivot, end, w0, w1);
-    else if (q == 2) largest = passColumn(2, pivot, end, w0, w1);
-    else largest = passColumn(3, pivot, end, w0, w1);
+    if (q == 0) largest = passColumn(0, pivot, end, from, strideFrom, w0, w1);
+    else if (q == 1) largest = passColumn(1, pivot, end, 0, 0, w0, w1);
+    else if (q == 2) largest = passColumn(2, pivot, end, 0, 0, w0, w1);
+    else largest = passColumn(3, pivot, end, 0, 0, w0, w1);
     w0 = zero;
     w1 = zero;
     if (largest == 0) continue;
     if (Math.abs(f64At(pivot, q)) < SMALL * largest) {
-      let best = pivot + 32;
-      while (Math.abs(f64At(best, q)) != largest) best += 32;
-      swapPairs(pivot, best, pivot + 32);
-      const own = a + <usize>r * row, other = a + (best - v >> 5) * row;
-      swapPairs(own + after, other + after, own + row);
+      const other = load<u32>(best), into = a + (other - v >> 5) * row, own = a + <usize>r * row;
+      swapPairs(pivot, other, pivot + 32);
+      swapPairs(own + after, into + after, own + row);
     }
     const kept = corner + (<usize>r << 5), p0 = v128.load(pivot), p1 = v128.load(pivot, 16);
     v128.store(kept, p0);
@@ -267,26 +290,23 @@ function reflectRows(isFull: bool, v: usize, end: usize, c: usize, row: usize, c
 }
 
 export function triangularize(
-  columns: i32, a: usize, ld: i32, ends: usize, from: i32, to: i32, done: i32, leads: usize, scratch: usize,
+  columns: i32, a: usize, ld: i32, ends: usize, first: i32, to: i32, done: i32, leads: usize, scratch: usize,
 ): i32 {
-  assert((ld & 1) == 0 && ld >= columns && (from & 3) == 0, "rows of even length, strips of four");
+  assert((ld & 1) == 0 && ld >= columns && (first & 3) == 0, "rows of even length, strips of four");
   const row = bytes(ld), v = scratch;
-  for (let j = from; j < to; j += 4) {
+  for (let j = first; j < to; j += 4) {
     const cols = min(4, columns - j), len = i32At(ends, j + cols - 1) - done;
     if (len <= 0) continue;
     const top = a + <usize>done * row, end = v + (<usize>len << 5);
-    let at = top + bytes(j);
-    if (cols == 4) {
-      for (let p = v; p < end; p += 32, at += row) {
-        v128.store(p, v128.load(at));
-        v128.store(p, v128.load(at, 16), 16);
-      }
-    } else {
-      for (let p = v; p < end; p += 32, at += row) for (let q = 0; q < 4; ++q) setF64(p, q, q < cols ? f64At(at, q) : 0);
+    let from = top + bytes(j), strideFrom = row;
+    if (cols < 4) { // the carried part begins here: zeros in its place
+      for (let p = v; p < end; p += 32, from += row) for (let q = 0; q < 4; ++q) setF64(p, q, q < cols ? f64At(from, q) : 0);
+      from = v;
+      strideFrom = 32;
     }
     // Whole pairs of columns are exchanged and reflected: what lies in the strip itself is written afterwards.
     const after = j + cols & ~1;
-    const rows = reduceStrip(cols, len, ends + (<usize>j << 2), done, v, top, row, bytes(after), leads + (<usize>done << 2), j);
+    const rows = reduceStrip(cols, len, ends + (<usize>j << 2), done, v, from, strideFrom, top, row, bytes(after), leads + (<usize>done << 2), j);
     if (f64At(t, 0) != 0 || f64At(t, 5) != 0 || f64At(t, 10) != 0 || f64At(t, 15) != 0)
       reflectRows(rows == 4, v, end, top + bytes(after), row, ld - after);
     for (let i = 0; i < rows; ++i) {

@@ -2,7 +2,6 @@
  *  squared on the way. Each front stacks the triangles that its children left on the rows that arrive at it, is triangularized, gives
  *  its first rows to the panel (R = Lᵀ, its diagonal positive) and leaves the rest to its parent. The reflections are not kept;
  *  a right-hand side b is carried along, so that the least-squares solution needs no normal equations: Lᵀ x = (Qᵀ b) on top.
- *  Columns are scaled by powers of two first, which changes no digit, so that squares neither overflow nor vanish.
  *  Sources: Liu (1986), "On general row merging schemes for sparse Givens transformations", SIAM J. Sci. Stat. Comput. 7; Amestoy, Duff,
  *  Puglisi (1996), "Multifrontal QR factorization in a multiprocessor environment", Numer. Linear Algebra Appl. 3; the right-hand side:
  *  Golub (1965), "Numerical methods for solving linear least squares problems", Numer. Math. 7. */
@@ -15,8 +14,7 @@ import { frontFlops, frontLead, RowPlan } from "../symbolic/row-plan";
 import { Symbolic } from "../symbolic/symbolic";
 import { Factor } from "./cholesky";
 
-/** A diagonal entry of R at most this share of its column's size is rounding noise: the unknown is not determined in f64. The size is
- *  √(entries) × the largest of them, at least the column's norm. */
+/** A diagonal entry of R at most this share of its column's norm is rounding noise: the unknown is not determined in f64. */
 export const RANK_FLOOR: f64 = 16 * f64.EPSILON;
 /** Columns of a large front reduced in one piece of a sliced call, and the entries from which a front counts as large. */
 const SLICE = 32, LARGE = 65536;
@@ -36,8 +34,9 @@ export class Orthogonal {
   /** 1 with a right-hand side, else 0, and the power of two by which it is multiplied. */
   carried: i32;
   rightScale: f64;
-  /** f64[n] each, elimination order: powers of two by which columns are multiplied, so that the largest entry is in [1, 2); Qᵀb. */
-  scale: usize;
+  /** f64[n], caller's numbering: squared norms of the columns. */
+  squares: usize;
+  /** f64[n], elimination order: Qᵀb. */
   turned: usize;
   /** The front at hand, and what finished fronts have left, both in bytes. */
   front: usize;
@@ -46,13 +45,9 @@ export class Orthogonal {
   stackAt: usize;
   left: usize;
   top: usize;
-  /** i32[n]: position in the front of each of its rows below. */
-  local: usize;
   /** i32[tallest + 1] each: ends of the staircase; columns at which rows of R begin. */
   ends: usize;
   leads: usize;
-  /** f64[tallest]: what undoes the columns' scaling. */
-  unscale: usize;
   scratch: usize;
   /** Supernode at hand, what is next for it, from which column, rows in the front, rows finished. */
   at: i32;
@@ -60,21 +55,22 @@ export class Orthogonal {
   from: i32;
   rows: i32;
   finished: i32;
-  /** Where it stopped: the diagonal entry and its column's size. */
+  /** The diagonal entry that stopped it. */
   pivot: f64;
-  pivotSize: f64;
   done: f64;
 }
 
 /** Bytes that orthogonalBegin takes: the largest front, what waits for it, a few numbers a row and unknown. */
 export function orthogonalBytes(plan: RowPlan): f64 {
   const s = plan.symbolic;
-  return plan.frontBytes + plan.stackBytes + <f64>householderScratch(plan.mostRows) + 20 * <f64>s.n + 8 * <f64>s.supernodes + 16 * <f64>s.tallest + 264;
+  return plan.frontBytes + plan.stackBytes + <f64>householderScratch(plan.mostRows) + 8 * <f64>s.n + 8 * <f64>s.supernodes + 8 * <f64>s.tallest + 264;
 }
 
 /** Starts eliminating rows with these numbers, f64[entries] in the plan's order; right f64[rows], or 0: no right-hand side. All of them
- *  must stay. Their variances are 1 and they are finite. Whatever the factor held is lost. Null when memory runs out. */
-export function orthogonalBegin(factor: Factor, plan: RowPlan, values: usize, right: usize): Orthogonal | null {
+ *  must stay, and so must squares f64[n]: the squared norms of the columns, caller's numbering, between 2^−900 and 2^900, so that no
+ *  product of two entries overflows and none that counts vanishes. The rows' variances are 1. Whatever the factor held is lost.
+ *  Null when memory runs out. */
+export function orthogonalBegin(factor: Factor, plan: RowPlan, values: usize, right: usize, squares: usize): Orthogonal | null {
   const s = factor.symbolic, address = allocateArray(1, 8);
   if (!address) return null;
   assert(offsetof<Orthogonal>() <= 256 && plan.symbolic == s, "rows planned for this pattern");
@@ -85,31 +81,29 @@ export function orthogonalBegin(factor: Factor, plan: RowPlan, values: usize, ri
   job.values = values;
   job.right = right;
   job.carried = right ? 1 : 0;
-  job.scale = allocateArray(2 * n, 3);
+  job.squares = squares;
+  job.turned = allocateArray(n, 3);
   job.front = allocateArray(plan.frontBytes, 0);
   job.stack = allocateArray(plan.stackBytes, 0);
   job.stackAt = allocateArray(2 * <f64>s.supernodes, 2);
-  job.local = allocateArray(n, 2);
   job.ends = allocateArray(2 * tallest + 2, 2);
-  job.unscale = allocateArray(tallest, 3);
   job.scratch = allocate(householderScratch(plan.mostRows));
-  const complete = job.scale && job.front && job.stack && job.stackAt && job.local && job.ends && job.unscale && job.scratch;
+  const complete = job.turned && job.front && job.stack && job.stackAt && job.ends && job.scratch;
   if (!complete) { orthogonalRelease(job); return null; }
-  job.turned = atF64(job.scale, s.n);
   job.left = job.stackAt + (<usize>s.supernodes << 2);
   job.leads = job.ends + (<usize>(s.tallest + 1) << 2);
-  scaleColumns(job);
+  let largest: f64 = 0;
+  if (right) for (let r = 0; r < plan.rows; ++r) largest = max(largest, Math.abs(f64At(right, r)));
+  job.rightScale = scaleOf(largest);
   return job;
 }
 
 export function orthogonalRelease(job: Orthogonal): void {
-  release(job.scale);
+  release(job.turned);
   release(job.front);
   release(job.stack);
   release(job.stackAt);
-  release(job.local);
   release(job.ends);
-  release(job.unscale);
   release(job.scratch);
   release(changetype<usize>(job));
 }
@@ -120,19 +114,6 @@ function scaleOf(size: f64): f64 {
   return reinterpret<f64>(2046 - max<i64>(1, min<i64>(exponent, 2045)) << 52);
 }
 
-function scaleColumns(job: Orthogonal): void {
-  const plan = job.plan, n = plan.symbolic.n, entries = i32At(plan.rowStart, plan.rows), scale = job.scale;
-  memory.fill(scale, 0, <usize>n << 3);
-  for (let p = 0; p < entries; ++p) {
-    const c = i32At(plan.column, p), size = Math.abs(f64At(job.values, p));
-    if (size > f64At(scale, c)) setF64(scale, c, size);
-  }
-  for (let c = 0; c < n; ++c) setF64(scale, c, scaleOf(f64At(scale, c)));
-  let largest: f64 = 0;
-  if (job.right) for (let r = 0; r < plan.rows; ++r) largest = max(largest, Math.abs(f64At(job.right, r)));
-  job.rightScale = scaleOf(largest);
-}
-
 /** Does about `budget` units of work. OK when L is complete, RUNNING, or 1 + the caller's unknown that the rows do not determine, given
  *  those eliminated before it (see orthogonalPivot). After a failure L is unusable until a factorization succeeds. */
 export function orthogonalAdvance(job: Orthogonal, budget: f64): i32 {
@@ -141,7 +122,7 @@ export function orthogonalAdvance(job: Orthogonal, budget: f64): i32 {
   while (job.at < s.supernodes) {
     if (spent >= budget) return RUNNING;
     const t = job.at, columns = i32At(s.first, t + 1) - i32At(s.first, t) + i32At(s.rowStart, t + 1) - i32At(s.rowStart, t);
-    const ld = frontLead(columns);
+    const ld = frontLead(columns, job.carried);
     if (job.phase == GATHER) {
       gatherFront(job, t, columns, ld);
       spent += UNITS_PER_SUPERNODE + <f64>job.rows * <f64>ld;
@@ -168,20 +149,13 @@ export function orthogonalAdvance(job: Orthogonal, budget: f64): i32 {
 
 /** Work done ÷ work predicted, 0 to 1. */
 export function orthogonalProgress(job: Orthogonal): f64 { return job.plan.flops > 0 ? min(1.0, job.done / job.plan.flops) : 1; }
-/** The diagonal entry of R that stopped the elimination, and the size of its column of J (see RANK_FLOOR). */
+/** The diagonal entry of R that stopped the elimination. */
 export function orthogonalPivot(job: Orthogonal): f64 { return job.pivot; }
-export function orthogonalPivotSize(job: Orthogonal): f64 { return job.pivotSize; }
 
 /** The front of supernode t, rows sorted by where they begin: counted first, then put in their places. */
 function gatherFront(job: Orthogonal, t: i32, columns: i32, ld: i32): void {
   const plan = job.plan, s = plan.symbolic, first = i32At(s.first, t), width = i32At(s.first, t + 1) - first;
-  const ends = job.ends, row = <usize>ld << 3, rowsBelow = s.rows + (<usize>i32At(s.rowStart, t) << 2);
-  for (let k = 0; k < width; ++k) setF64(job.unscale, k, 1 / f64At(job.scale, first + k));
-  for (let k = width; k < columns; ++k) {
-    const c = i32At(rowsBelow, k - width);
-    setI32(job.local, c, k);
-    setF64(job.unscale, k, 1 / f64At(job.scale, c));
-  }
+  const ends = job.ends, row = <usize>ld << 3;
   const start = plan.arrivalStart, child = i32At(s.childStart, t), childEnd = i32At(s.childStart, t + 1);
   setI32(ends, 0, 0);
   for (let k = 0; k < columns; ++k) setI32(ends, k + 1, k < width ? i32At(start, first + k + 1) - i32At(start, first + k) : 0);
@@ -194,10 +168,7 @@ function gatherFront(job: Orthogonal, t: i32, columns: i32, ld: i32): void {
     for (let q = i32At(start, first + k), last = i32At(start, first + k + 1); q < last; ++q) {
       const r = i32At(plan.arrivals, q), place = i32At(ends, k), into = job.front + <usize>place * row;
       setI32(ends, k, place + 1);
-      for (let p = i32At(plan.rowStart, r), end = i32At(plan.rowStart, r + 1); p < end; ++p) {
-        const c = i32At(plan.column, p), at = c - first;
-        addF64(into, at < width ? at : i32At(job.local, c), f64At(job.values, p) * f64At(job.scale, c));
-      }
+      for (let p = i32At(plan.rowStart, r), end = i32At(plan.rowStart, r + 1); p < end; ++p) addF64(into, i32At(plan.column, p), f64At(job.values, p));
       if (job.carried) setF64(into, columns, f64At(job.right, r) * job.rightScale);
     }
   }
@@ -241,21 +212,25 @@ function copyRun(from: usize, into: usize, count: i32): void {
   if (k) store<f64>(into, load<f64>(from));
 }
 
-/** The supernode's own rows of R into its panel, as columns of L with a positive diagonal. 0, or 1 + the unknown whose row is missing or too small. */
+/** The supernode's own rows of R into its panel, as columns of L with a positive diagonal. 0, or 1 + the unknown whose row is missing or
+ *  too small. */
 function storePanel(job: Orthogonal, t: i32, columns: i32, ld: i32): i32 {
   const s = job.factor.symbolic, first = i32At(s.first, t), width = i32At(s.first, t + 1) - first, lead = i32At(s.lead, t);
-  const panel = job.factor.panels + (<usize>u32At(s.panel, t) << 3), unscale = job.unscale;
+  const panel = job.factor.panels + (<usize>u32At(s.panel, t) << 3);
   for (let i = 0; i < width; ++i) {
-    const from = job.front + (<usize>i * <usize>ld << 3), into = atF64(panel, i * lead), begins = i < job.finished && i32At(job.leads, i) == i;
-    const diagonal = begins ? f64At(from, i) : 0, size = 2 * Math.sqrt(<f64>i32At(job.plan.entries, first + i));
-    if (!(Math.abs(diagonal) > RANK_FLOOR * size)) {
-      job.pivot = Math.abs(diagonal) * f64At(unscale, i);
-      job.pivotSize = size * f64At(unscale, i);
-      return 1 + i32At(s.order, first + i);
+    const from = job.front + (<usize>i * <usize>ld << 3), begins = i < job.finished && i32At(job.leads, i) == i;
+    const diagonal = begins ? f64At(from, i) : 0, unknown = i32At(s.order, first + i);
+    if (!(Math.abs(diagonal) > RANK_FLOOR * Math.sqrt(f64At(job.squares, unknown)))) {
+      job.pivot = Math.abs(diagonal);
+      return 1 + unknown;
     }
-    const sign: f64 = diagonal < 0 ? -1 : 1;
-    for (let k = 0; k < i; ++k) setF64(into, k, 0);
-    for (let k = i; k < columns; ++k) setF64(into, k, sign * f64At(from, k) * f64At(unscale, k));
+    // Pairs of entries, from the even one at or before the diagonal; ld is no less than the panel's lead.
+    const sign = diagonal < 0 ? -1.0 : 1.0, signs = f64x2.splat(sign);
+    const into = atF64(panel, i * lead);
+    let k = 0;
+    for (; k < (i & ~1); ++k) setF64(into, k, 0);
+    for (; k < columns; k += 2) v128.store(atF64(into, k), f64x2.mul(signs, v128.load(atF64(from, k))));
+    if (i & 1) setF64(into, i - 1, 0);
     if (job.carried) setF64(job.turned, first + i, sign * f64At(from, columns));
   }
   return 0;

@@ -10,15 +10,14 @@ import { Symbolic } from "./symbolic";
 @unmanaged
 export class RowPlan {
   symbolic: Symbolic;
-  /** Rows, and the entries of all of them: rowStart i32[rows + 1], column i32[entries] in elimination order. Both are the caller's. */
+  /** Rows, and the entries of all of them: rowStart i32[rows + 1]; column i32[entries], an entry's place in the front (its columns, then
+   *  its rows below) of the row's supernode. Both arrays are the caller's. */
   rows: i32;
   rowStart: usize;
   column: usize;
   /** i32[n + 1] and i32[rows]: the rows whose first column is each. */
   arrivalStart: usize;
   arrivals: usize;
-  /** i32[n]: entries of each column. */
-  entries: usize;
   /** i32[supernodes]: the most rows that a supernode leaves to its parent. */
   leaves: usize;
   /** Rows of the tallest front. */
@@ -45,7 +44,7 @@ export function frontFlops(rows: i32, columns: i32): f64 {
 }
 
 /** Plans for rows of this pattern, or null when memory runs out. rowStart i32[rows + 1] and column i32[entries] must stay; column holds
- *  the caller's unknowns, any order, and is turned into elimination order. No row may be empty. Cost: O(entries + rows + n). */
+ *  the caller's unknowns, any order, and is turned into places in the front. No row may be empty. Cost: O(entries + rows + n). */
 export function rowPlanCreate(s: Symbolic, rows: i32, rowStart: usize, column: usize): RowPlan | null {
   const address = allocateArray(1, 7);
   if (!address) return null;
@@ -58,12 +57,10 @@ export function rowPlanCreate(s: Symbolic, rows: i32, rowStart: usize, column: u
   plan.column = column;
   plan.arrivalStart = allocateArray(<f64>n + 1, 2);
   plan.arrivals = allocateArray(<f64>rows, 2);
-  plan.entries = allocateArray(<f64>n, 2);
   plan.leaves = allocateArray(<f64>supernodes, 2);
-  const firstOf = allocateArray(<f64>rows, 2), start = plan.arrivalStart;
-  if (!start || !plan.arrivals || !plan.entries || !plan.leaves || !firstOf) { release(firstOf); rowPlanRelease(plan); return null; }
+  const firstOf = allocateArray(<f64>rows + <f64>n, 2), start = plan.arrivalStart;
+  if (!start || !plan.arrivals || !plan.leaves || !firstOf) { release(firstOf); rowPlanRelease(plan); return null; }
   memory.fill(start, 0, <usize>(n + 1) << 2);
-  memory.fill(plan.entries, 0, <usize>n << 2);
   for (let r = 0, p = 0; r < rows; ++r) {
     const end = i32At(rowStart, r + 1);
     assert(p < end, "no row is empty");
@@ -71,7 +68,6 @@ export function rowPlanCreate(s: Symbolic, rows: i32, rowStart: usize, column: u
     for (; p < end; ++p) {
       const c = i32At(s.place, i32At(column, p));
       setI32(column, p, c);
-      addI32(plan.entries, c, 1);
       least = min(least, c);
     }
     setI32(firstOf, r, least);
@@ -84,6 +80,7 @@ export function rowPlanCreate(s: Symbolic, rows: i32, rowStart: usize, column: u
     setI32(plan.arrivals, at, r);
     setI32(start, c, at);
   }
+  placeEntries(plan, firstOf + (<usize>rows << 2));
   release(firstOf);
   layFronts(plan);
   return plan;
@@ -92,9 +89,24 @@ export function rowPlanCreate(s: Symbolic, rows: i32, rowStart: usize, column: u
 export function rowPlanRelease(plan: RowPlan): void {
   release(plan.arrivalStart);
   release(plan.arrivals);
-  release(plan.entries);
   release(plan.leaves);
   release(changetype<usize>(plan));
+}
+
+/** Turns the entries' columns into places in their fronts. `local` i32[n] is workspace without requirement. */
+function placeEntries(plan: RowPlan, local: usize): void {
+  const s = plan.symbolic;
+  for (let t = 0; t < s.supernodes; ++t) {
+    const first = i32At(s.first, t), end = i32At(s.first, t + 1);
+    for (let q = i32At(s.rowStart, t), last = i32At(s.rowStart, t + 1), k = end - first - q; q < last; ++q) setI32(local, i32At(s.rows, q), q + k);
+    for (let q = i32At(plan.arrivalStart, first), last = i32At(plan.arrivalStart, end); q < last; ++q) {
+      const r = i32At(plan.arrivals, q);
+      for (let p = i32At(plan.rowStart, r), to = i32At(plan.rowStart, r + 1); p < to; ++p) {
+        const c = i32At(plan.column, p);
+        setI32(plan.column, p, c < end ? c - first : i32At(local, c));
+      }
+    }
+  }
 }
 
 /** Sizes of fronts and stack, going up the tree: what children leave lies on top of the stack when their parent takes it. */
@@ -109,7 +121,7 @@ function layFronts(plan: RowPlan): void {
       rows += left;
       held -= stackedBytes(left, i32At(s.rowStart, c + 1) - i32At(s.rowStart, c), 1);
     }
-    const left = max(0, min(rows - width, below)), front = 8 * <f64>rows * <f64>frontLead(width + below);
+    const left = max(0, min(rows - width, below)), front = 8 * <f64>rows * <f64>frontLead(width + below, 1);
     setI32(plan.leaves, t, left);
     held += stackedBytes(left, below, 1);
     if (held > plan.stackBytes) plan.stackBytes = held;
@@ -119,6 +131,6 @@ function layFronts(plan: RowPlan): void {
   }
 }
 
-/** Entries from one row of a front of `columns` columns to the next: room for a right-hand side, even. */
+/** Entries from one row of a front of `columns` columns, and what it carries, to the next: even. */
 // @ts-ignore: decorator
-@inline export function frontLead(columns: i32): i32 { return columns + 2 & ~1; }
+@inline export function frontLead(columns: i32, carried: i32): i32 { return columns + carried + 1 & ~1; }

@@ -49,7 +49,8 @@ const NO_DIGITS = 1 / 16;
 /** A condition of JᵀWJ up to here is told well enough by its Cholesky factor, and far from that of rows without rank. */
 const KNOWN_CONDITION = 1e12;
 
-const SMALLEST_NORMAL = 2 ** -1022;
+/** Largest squared norm of a column, and the reciprocal of the smallest: see orthogonalBegin in assembly/factor/orthogonal.ts. */
+const LARGEST_SQUARE = 2 ** 900;
 
 const routes = ["automatic", "information", "orthogonal"];
 const optionNames = [...factorizeOptionNames, "weights", "route"];
@@ -157,7 +158,7 @@ function* rowSteps({ rows, options, route }: CheckedRows, residual?: Float64Arra
     const condition = route === "automatic" ? yield* conditionSteps(room, squares, share) : undefined;
     if (condition !== undefined && condition * Number.EPSILON <= LARGEST_LOSS)
       return { factor: finish("information", `${conditionText(condition)}, which leaves digits enough`) };
-    const solution = yield* orthogonalSteps(room, rows, residual, share);
+    const solution = yield* orthogonalSteps(room, rows, residual, squares, share);
     if (condition === undefined || condition > KNOWN_CONDITION) yield* determinedSteps(room, squares);
     const because =
       route === "orthogonal"
@@ -216,11 +217,11 @@ function* determinedSteps(room: FactorParts, squares: Float64Array): Steps<void>
 }
 
 /** The diagonal of JᵀWJ: the squared norms of the columns of √W J.
- *  @throws {RankDeficientError} a column of zeros.  @throws {ColumnRangeError} one whose squares f64 cannot hold. */
+ *  @throws {RankDeficientError} a column of zeros.  @throws {ColumnRangeError} one whose products with others f64 could not hold. */
 function squaresOf({ order, columnPointers, values }: LowerColumns, { jacobian }: WeightedRows): Float64Array {
   const squares = Float64Array.from({ length: order }, (_, j) => values[columnPointers[j]!]!);
   for (const [j, square] of squares.entries()) {
-    if (square >= SMALLEST_NORMAL && square < Number.POSITIVE_INFINITY) continue;
+    if (square >= 1 / LARGEST_SQUARE && square <= LARGEST_SQUARE) continue;
     if (jacobian.values.subarray(jacobian.columnPointers[j], jacobian.columnPointers[j + 1]).every((v) => v === 0))
       throw new RankDeficientError(j, 0, 0);
     throw new ColumnRangeError(j, square);
@@ -233,6 +234,7 @@ function* orthogonalSteps(
   { pattern: { order }, symbolic, factor }: FactorParts,
   { kept, weights, rowPointers, columnIndices, values }: WeightedRows,
   residual: Float64Array | undefined,
+  squares: Float64Array,
   from: number,
 ): Steps<Float64Array | undefined> {
   const k = kernel();
@@ -248,9 +250,9 @@ function* orthogonalSteps(
     plan = addressOrThrow(what, k.rowPlanCreate(symbolic, kept.length, rowStart, column), 8 * (kept.length + order));
     const bytes = k.orthogonalBytes(plan);
     requireMemory(what, bytes);
-    job = addressOrThrow(what, k.orthogonalBegin(factor, plan, numbers, right), bytes);
+    job = addressOrThrow(what, k.orthogonalBegin(factor, plan, numbers, right, loan.floats(squares)), bytes);
     const failed = yield { advance: (budget) => k.orthogonalAdvance(job, budget), progress: () => k.orthogonalProgress(job), from, to: 1 };
-    if (failed > 0) throw new RankDeficientError(failed - 1, k.orthogonalPivot(job), k.orthogonalPivotSize(job));
+    if (failed > 0) throw new RankDeficientError(failed - 1, k.orthogonalPivot(job), Math.sqrt(squares[failed - 1]!));
     if (!right) return undefined;
     const out = loan.room(8 * order);
     if (k.orthogonalSolution(job, out) !== status.ok) throw new MemoryLimitError(what, 8 * order, bytesAvailable());

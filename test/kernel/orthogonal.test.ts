@@ -41,6 +41,13 @@ function normalMatrix({ n, columns, values }: RandomRows) {
   return lowerFrom(n, sums);
 }
 
+/** Squared norms of the columns. */
+function squaresOf(columns: readonly (readonly number[])[], values: readonly (readonly number[])[], n: number): Float64Array {
+  const squares = new Float64Array(n);
+  for (const [r, row] of columns.entries()) for (const [k, j] of row.entries()) squares[j]! += values[r]![k]! ** 2;
+  return squares;
+}
+
 /** Plans, runs in slices of `budget` with progress that never falls, and gives the status and the solution. */
 function eliminate(pipeline: Pipeline, { n, columns, values, right }: RandomRows, budget: number, withRight = true) {
   const { raw } = kernel;
@@ -51,12 +58,13 @@ function eliminate(pipeline: Pipeline, { n, columns, values, right }: RandomRows
     intoKernel(kernel, Float64Array.from(values.flat())),
     intoKernel(kernel, Float64Array.from(right)),
     intoKernel(kernel, new Float64Array(n)),
+    intoKernel(kernel, squaresOf(columns, values, n)),
   ] as const;
   const plan = raw.rowPlanCreate!(pipeline.symbolic, columns.length, blocks[0], blocks[1]);
   const before = raw.memoryUsed!();
-  const job = raw.orthogonalBegin!(pipeline.factor, plan, blocks[2], withRight ? blocks[3] : 0);
-  // Block headers and roundings come on top: at most 64 bytes for each of the ten blocks.
-  expect(raw.memoryUsed!() - before).toBeLessThanOrEqual(raw.orthogonalBytes!(plan) + 640);
+  const job = raw.orthogonalBegin!(pipeline.factor, plan, blocks[2], withRight ? blocks[3] : 0, blocks[5]);
+  // Block headers and roundings come on top: at most 64 bytes for each of the eight blocks.
+  expect(raw.memoryUsed!() - before).toBeLessThanOrEqual(raw.orthogonalBytes!(plan) + 512);
   let last = 0;
   let status = -1;
   for (; status === -1; ) {
@@ -68,7 +76,7 @@ function eliminate(pipeline: Pipeline, { n, columns, values, right }: RandomRows
   }
   if (status === 0 && withRight) expect(raw.orthogonalSolution!(job, blocks[4])).toBe(0);
   const solution = floatsAt(kernel, blocks[4], n);
-  const pivot = raw.orthogonalPivot!(job) / raw.orthogonalPivotSize!(job);
+  const pivot = raw.orthogonalPivot!(job);
   raw.orthogonalRelease!(job);
   raw.rowPlanRelease!(plan);
   for (const block of blocks) raw.release!(block);
@@ -163,6 +171,7 @@ test("memory that is refused at any of its blocks is a status, and nothing is ke
   const columns = Int32Array.from(rows.columns.flat());
   const column = intoKernel(kernel, columns);
   const values = intoKernel(kernel, Float64Array.from(rows.values.flat()));
+  const squares = intoKernel(kernel, squaresOf(rows.columns, rows.values, 20));
   const limit = raw.memoryLimit!();
   const used = raw.memoryUsed!();
   let [refused, done] = [0, false];
@@ -170,7 +179,7 @@ test("memory that is refused at any of its blocks is a status, and nothing is ke
     raw.setMemoryLimit!(used + room);
     new Int32Array(kernel.memory.buffer, column, columns.length).set(columns);
     const plan = raw.rowPlanCreate!(pipeline.symbolic, rows.columns.length, rowStart, column);
-    const job = plan ? raw.orthogonalBegin!(pipeline.factor, plan, values, 0) : 0;
+    const job = plan ? raw.orthogonalBegin!(pipeline.factor, plan, values, 0, squares) : 0;
     done = job !== 0;
     if (job) raw.orthogonalRelease!(job);
     else refused += 1;
@@ -179,6 +188,6 @@ test("memory that is refused at any of its blocks is a status, and nothing is ke
   }
   expect(refused).toBeGreaterThan(10);
   raw.setMemoryLimit!(limit);
-  for (const block of [rowStart, column, values]) raw.release!(block);
+  for (const block of [rowStart, column, values, squares]) raw.release!(block);
   pipeline.release();
 });
