@@ -1,4 +1,5 @@
 // The measurement rows of a stream, each divided by its standard deviation, one row after another.
+import type { SparseColumns } from "../../src/index.js";
 import type { Stream } from "./stream.js";
 
 export interface Rows {
@@ -43,4 +44,23 @@ export function whitenedRows(stream: Stream): Rows {
     values: Float64Array.from(values),
     residual: Float64Array.from(residuals),
   };
+}
+
+/** Rows of a measurement stream, by columns. */
+export function byColumns({ rows, columns, rowPointers, columnIndices, values }: Rows): SparseColumns {
+  const columnPointers = new Int32Array(columns + 1);
+  for (const j of columnIndices) columnPointers[j + 1]! += 1;
+  for (let j = 0; j < columns; j += 1) columnPointers[j + 1]! += columnPointers[j]!;
+  const next = columnPointers.slice();
+  const rowIndices = new Int32Array(values.length);
+  const byColumn = new Float64Array(values.length);
+  for (let r = 0; r < rows; r += 1) {
+    for (let p = rowPointers[r]!; p < rowPointers[r + 1]!; p += 1) {
+      const at = next[columnIndices[p]!]!;
+      next[columnIndices[p]!] = at + 1;
+      rowIndices[at] = r;
+      byColumn[at] = values[p]!;
+    }
+  }
+  return { rows, columns, columnPointers, rowIndices, values: byColumn };
 }

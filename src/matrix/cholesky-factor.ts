@@ -35,6 +35,8 @@ export interface RowStatistics {
   readonly route: "information" | "orthogonal";
   /** Why that one, in a sentence. */
   readonly because: string;
+  /** The estimate of the condition of JᵀWJ scaled to unit diagonal that the choice rests on; left out where none was made. */
+  readonly condition?: number | undefined;
   /** Rows that were left out because their weight is zero, ascending. */
   readonly ignored: readonly number[];
 }

@@ -1,7 +1,7 @@
 // Measurement rows to a factor without squaring their condition: certified fits, exact fractions, double-double.
 import { beforeAll, describe, expect, test } from "vitest";
 import { chain } from "../../bench/families/chain.js";
-import { whitenedRows } from "../../bench/families/rows.js";
+import { byColumns, whitenedRows } from "../../bench/families/rows.js";
 import { type FamilyName, families } from "../../bench/families.js";
 import {
   factorize,
@@ -20,7 +20,7 @@ import { ExactSums } from "../support/exact-twin.js";
 import { errorOf, initFacade } from "../support/facade.js";
 import { randomFrom } from "../support/pipeline.js";
 import { inverseExactly, Rational, solveExactly } from "../support/rational.js";
-import { byColumns, jacobianOf } from "../support/sparse-rows.js";
+import { jacobianOf } from "../support/sparse-rows.js";
 import { agreeingDigits, designRow, linearFits } from "../support/strd.js";
 
 beforeAll(initFacade);
