@@ -29,9 +29,13 @@ export { releaseSymbolic as symbolicRelease } from "./symbolic/symbolic";
 export {
   symbolicOrder, symbolicNonzeros, symbolicFlops, symbolicSupernodes, symbolicBlocks, symbolicOrdering, symbolicBytes, factorBytes, inverseBytes,
 } from "./symbolic/facts";
-export { factorCreate, factorRelease, factorBegin, factorAdvance, factorProgress, factorPivot, logDeterminant, pivotSpread } from "./factor/cholesky";
+export {
+  factorCreate, factorRelease, factorBegin, factorAdvance, factorProgress, factorPivot, logDeterminant, pivotSpread, weakestUnknown,
+} from "./factor/cholesky";
 export { solveBegin, solveAdvance, solveProgress, solveRelease } from "./solve/solve";
 export { inverseEntries } from "./solve/entries";
+export { inverseBlock } from "./solve/block";
+export { squaresBegin, squaresAdvance, squaresProgress, squaresRelease } from "./solve/squares";
 export { inverseBegin, inverseAdvance, inverseProgress, inverseRelease, inverseDiagonal } from "./inverse/selected-inverse";
 export { inverseOnMatrix, inverseOnFactor, inverseFactorColumns, factorEntries } from "./inverse/pattern";
 export { reciprocalCondition } from "./condition";
@@ -53,3 +57,7 @@ export {
   addedGrowth, removedReach, removedGrowth, owedGrowth, innovationGrowth,
 } from "./ledger/facts";
 export { householderScratch, triangularize } from "./dense/householder";
+export { rowPlanCreate, rowPlanRelease } from "./symbolic/row-plan";
+export {
+  orthogonalBytes, orthogonalBegin, orthogonalAdvance, orthogonalProgress, orthogonalRelease, orthogonalPivot, orthogonalSolution,
+} from "./factor/orthogonal";

@@ -10,8 +10,9 @@ import { dense } from "./sections/dense.js";
 import { factor } from "./sections/factor.js";
 import { incremental } from "./sections/incremental.js";
 import { inverse } from "./sections/inverse.js";
+import { orthogonal } from "./sections/orthogonal.js";
 
-const sections = [dense, factor, inverse, incremental];
+const sections = [dense, factor, inverse, orthogonal, incremental];
 
 const { values, positionals } = parseArgs({
   allowPositionals: true,

@@ -69,7 +69,18 @@ export interface KernelExports {
   factorRelease(factor: number): void;
   logDeterminant(factor: number): number;
   pivotSpread(factor: number, diagonal: number): number;
+  weakestUnknown(factor: number, diagonal: number): number;
   reciprocalCondition(factor: number, columnStart: number, rowIndex: number, values: number): number;
+
+  rowPlanCreate(symbolic: number, rows: number, rowStart: number, column: number): number;
+  rowPlanRelease(plan: number): void;
+  orthogonalBytes(plan: number): number;
+  orthogonalBegin(factor: number, plan: number, values: number, right: number, squares: number): number;
+  orthogonalAdvance(job: number, budget: number): number;
+  orthogonalProgress(job: number): number;
+  orthogonalPivot(job: number): number;
+  orthogonalSolution(job: number, out: number): number;
+  orthogonalRelease(job: number): void;
 
   scaledConditionBegin(factor: number, diagonal: number): number;
   scaledConditionAdvance(job: number, budget: number): number;
@@ -82,6 +93,11 @@ export interface KernelExports {
   solveProgress(job: number): number;
   solveRelease(job: number): void;
   inverseEntries(factor: number, rows: number, columns: number, count: number, out: number): number;
+  inverseBlock(factor: number, unknowns: number, count: number, out: number): number;
+  squaresBegin(factor: number, diagonal: number): number;
+  squaresAdvance(job: number, budget: number): number;
+  squaresProgress(job: number): number;
+  squaresRelease(job: number): void;
 
   inverseBegin(factor: number, keepPanels: number): number;
   inverseAdvance(inverse: number, budget: number): number;

@@ -99,6 +99,63 @@ export class NotPositiveDefiniteError extends SigmatideError {
   }
 }
 
+/** Measurement rows do not determine an unknown, or so weakly that f64 cannot tell. */
+export class RankDeficientError extends SigmatideError {
+  constructor(
+    /** The unknown at which elimination stopped, in the caller's numbering. */
+    readonly column: number,
+    /** What the rows tell of it once the unknowns eliminated before it are free to follow: its diagonal entry of R. */
+    readonly remaining: number,
+    /** The norm of its column of √W J. */
+    readonly size: number,
+  ) {
+    super(
+      "RANK_DEFICIENT",
+      `The rows do not determine the unknown of column ${column}: given those before it ${remaining.toExponential(3)} is left of a column of size ` +
+        `${size.toExponential(3)}, which is rounding noise. Add a row or a prior that fixes it.`,
+      { column, remaining, size },
+    );
+  }
+}
+
+/** Fewer rows that count than unknowns. */
+export class TooFewRowsError extends SigmatideError {
+  constructor(rows: number, columns: number) {
+    super("TOO_FEW_ROWS", `${rows} rows with a weight cannot determine ${columns} unknowns: add rows or priors, or leave unknowns out.`, {
+      rows,
+      columns,
+    });
+  }
+}
+
+/** A measurement row that touches no unknown. */
+export class EmptyRowError extends SigmatideError {
+  constructor(row: number) {
+    super("EMPTY_ROW", `Row ${row} has no entry: it says nothing about any unknown. Leave it out, or give it the weight 0.`, { row });
+  }
+}
+
+/** A column of a Jacobian so large or small that products with it could leave the range of f64. */
+export class ColumnRangeError extends SigmatideError {
+  constructor(column: number, square: number) {
+    super(
+      "COLUMN_RANGE",
+      `The squares of column ${column} of the weighted rows add up to ${square}, outside of 1e-270 to 1e270: take another unit for that unknown.`,
+      { column, square },
+    );
+  }
+}
+
+/** `refactor` was called on a factor that never was a matrix's. */
+export class RowFactorError extends SigmatideError {
+  constructor() {
+    super(
+      "ROW_FACTOR",
+      "This factor was made of measurement rows by the orthogonal route, and refactor takes a matrix: call factorizeRows with the new rows.",
+    );
+  }
+}
+
 export class NegativeWeightError extends SigmatideError {
   constructor(row: number, weight: number) {
     super("NEGATIVE_WEIGHT", `weights[${row}] is ${weight}: a weight is one over a variance, so zero or more.`, { row, weight });

@@ -14,8 +14,22 @@ export {
 } from "./estimate/estimate.js";
 export type { Evaluation } from "./estimate/evaluate.js";
 export type { Linearization, MeasurementInput, StateId } from "./estimate/rows.js";
-export { CholeskyFactor, type FactorStatistics, type SelectedInverseOptions } from "./matrix/cholesky-factor.js";
+export {
+  CholeskyFactor,
+  type FactorStatistics,
+  type InverseDiagonalOptions,
+  type RowStatistics,
+  type SelectedInverseOptions,
+} from "./matrix/cholesky-factor.js";
 export { factorize, factorizeAsync } from "./matrix/factorize.js";
+export {
+  type FactorizeRowsOptions,
+  factorizeRows,
+  factorizeRowsAsync,
+  type LeastSquares,
+  type LeastSquaresOptions,
+  leastSquares,
+} from "./matrix/factorize-rows.js";
 export { type MatrixMarketColumns, readMatrixMarket } from "./matrix/matrix-market-reader.js";
 export type { FactorizeOptions, OrderingName } from "./matrix/options.js";
 export type { SparseColumns } from "./matrix/sparse-columns.js";

@@ -58,10 +58,10 @@ export function factorTimes(times: i32, rows: i32, width: i32, source: usize, pa
   }
   return status;
 }
-export function triangularizeTimes(times: i32, m: i32, n: i32, source: usize, a: usize, ld: i32, scratch: usize): void {
+export function triangularizeTimes(times: i32, rows: i32, columns: i32, source: usize, a: usize, ld: i32, ends: usize, leads: usize, scratch: usize): void {
   for (let t = 0; t < times; ++t) {
-    copyPanel(n, source, a, ld);
-    triangularize(m, n, n, a, ld, scratch);
+    copyPanel(rows, source, a, ld);
+    triangularize(columns, a, ld, ends, 0, columns, 0, leads, scratch);
   }
 }
 export function solveRightTimes(times: i32, transposed: bool, m: i32, w: i32, l: usize, ldl: i32, b: usize, ldb: i32): void {

@@ -1,118 +1,319 @@
-/** Orthogonal triangularization of a dense block by Householder reflections in blocks, the reflections not kept.
+/** Orthogonal triangularization of a staircase of rows by Householder reflections in strips of four, the reflections not kept.
  *
- *  a: m × n, column-major. The first `steps` columns, steps ≤ min(m, n), become R: upper triangular, its diagonal ≥ 0, exact zeros
- *  below. The other n − steps columns (right-hand sides, or what goes on to a parent) are carried along: Qᵀ times them.
- *  scratch: householderScratch(m, n) bytes. Entries should lie between 1e−150 and 1e150 in size, or be zero: squares must hold.
- *  Cost 2·steps²·(m − steps/3) flops, and 4·(m − steps/2)·steps for each column carried along.
- *  The norm of column j of R is that of column j of A, so r[j, j] against it shows how much of the column was new.
- *  The sign of a reflection is the one that adds (v₀ = x₀ + sign(x₀)·‖x‖), and rows of R are turned positive at the end: with the other
- *  sign, rows of very different size would lose the accuracy they keep when sorted by size (Cox, Higham 1998, "Stability of
- *  Householder QR Factorization for Weighted Least Squares Problems").
- *  With V the vectors of a block, H₁H₂… = I − V T Vᵀ, T upper triangular, its diagonal 2 ÷ ‖v‖²; a block is halved down to four
- *  columns. Few columns are reflected one by one.
- *  Source: Schreiber, Van Loan (1989), "A Storage-Efficient WY Representation for Products of Householder Transformations", SIAM J.
- *  Sci. Stat. Comput. 10(1); Elmroth, Gustavson (2000), "Applying Recursion to Serial and Parallel QR Factorization", IBM J. Res.
- *  Dev. 44(4); Golub, Van Loan, Matrix Computations, section 5.2. */
-import { f64At, setF64 } from "../memory/access";
-import { ASSIGN, bytes, entry, NEGATE, SUBTRACT } from "./mode";
-import { multiply } from "./multiply";
-import { multiplyTransposed } from "./multiply-transposed";
-import { subtractTransposedProduct } from "./vector";
+ *  a: rows one after another, `ld` entries apart, ld even and at least columns + carried. Entries 0 … columns − 1 of a row are its
+ *  matrix part; what follows up to ld (right-hand sides; zeros to an even length) is carried along.
+ *  Rows are sorted by where they begin: ends i32[columns], ends[j] = rows that are not zero in columns 0 … j, never falling. Where a row
+ *  has not begun it holds zeros.
+ *  Columns [first, to) are worked on, `first` a multiple of four, to one too or all of them; `done` rows were finished before (0 at first).
+ *  Returns how many are finished now. Finished row i is row i of R: it begins at column leads[i] (i32, ascending), its entries before
+ *  that are without meaning. A column in which no unfinished row has an entry gives no row. After the last column, what a row that is
+ *  not finished carries is what of the right-hand side no unknown explains.
+ *  scratch: householderScratch(rows) bytes. Squares of entries must neither overflow nor vanish (orthogonal.ts scales columns).
+ *  Cost 4·(active rows)·(ld − column) flops a column, active rows being those begun and not finished: zeros of the staircase below
+ *  the strip at hand cost nothing.
+ *
+ *  Rows of very different size keep their own accuracy: a row whose entry in the column is the largest, or near it, is brought to the
+ *  pivot's place, and the sign of a reflection is the one that adds (v₀ = x₀ + sign(x₀)·‖x‖), so a diagonal of R may be negative.
+ *  With V the vectors of a strip, H₁H₂H₃H₄ = I − V T Vᵀ, T upper triangular, its diagonal 2 ÷ ‖v‖². One pass over the strip a column
+ *  carries out the reflection before and sums what the next one needs; then four columns of what follows at a time are reflected in
+ *  registers, by one pass for Vᵀ times them and one for the update.
+ *  Sources: Schreiber, Van Loan (1989), "A Storage-Efficient WY Representation for Products of Householder Transformations", SIAM J.
+ *  Sci. Stat. Comput. 10(1); Golub, Van Loan, Matrix Computations, section 5.2; rows of different size: Powell, Reid (1969), "On
+ *  applying Householder transformations to linear least squares problems", Proc. IFIP Congress 1968; Cox, Higham (1998), "Stability of
+ *  Householder QR Factorization for Weighted Least Squares Problems"; the staircase: George, Liu (1987), "Householder reflections
+ *  versus Givens rotations in sparse orthogonal decomposition", Linear Algebra Appl. 88/89. */
+import { f64At, i32At, setF64, setI32 } from "../memory/access";
+import { madd, nmadd } from "./madd";
+import { bytes } from "./mode";
 
-/** Columns reflected together before the rest is updated. */
-const BLOCK = 32;
+/** A row stays in the pivot's place while its entry is at least this share of the column's largest: the accuracy of small rows is bounded
+ *  by the reciprocal, and most exchanges are saved. */
+const SMALL = 0.125;
 
-/** Up to so many columns in all are reflected one by one: 60 × 24 in 7.0 µs against 7.7 in blocks; 100 × 48 in 41 against 36. */
-const FEW = 24;
+/** T, row-major 4 × 4; the strip's own columns of R, a row of four each; xᵀ times the strip, for the column x at hand. */
+const t = memory.data(128, 16);
+const corner = memory.data(128, 16);
+const sums = memory.data(32, 16);
+const best = memory.data(4, 4);
 
-/** Bytes of scratch: V, T, two products with V, signs. */
-export function householderScratch(m: i32, n: i32): usize {
-  return (<usize>(m + BLOCK + 2 * n) * BLOCK + <usize>n) << 3;
+/** Bytes of scratch: four vectors. */
+export function householderScratch(rows: i32): usize { return <usize>rows << 5; }
+
+// @ts-ignore: decorator
+@inline function swapPairs(p: usize, q: usize, end: usize): void {
+  for (; p < end; p += 16, q += 16) {
+    const u = v128.load(p);
+    v128.store(p, v128.load(q));
+    v128.store(q, u);
+  }
 }
 
-/** Short runs: a call to the host's fill costs more than these up to some dozens of entries. */
-function clear(at: usize, n: i32): void {
-  for (let i = 0; i < n; ++i) setF64(at, i, 0);
+/** Entry q of a row of four, in both lanes. */
+// @ts-ignore: decorator
+@inline function lane(q: i32, low: v128, high: v128): v128 {
+  if (q == 0) return v128.shuffle<f64>(low, low, 0, 0);
+  if (q == 1) return v128.shuffle<f64>(low, low, 1, 1);
+  if (q == 2) return v128.shuffle<f64>(high, high, 0, 0);
+  return v128.shuffle<f64>(high, high, 1, 1);
 }
 
-/** The reflection of x, length m ≥ 1, onto its first entry, carried out on the `later` columns that follow x. x becomes the vector v,
- *  work[0] what the first entry of x becomes; returns 2 ÷ ‖v‖², or 0 for x = 0. work f64[later + 1]. */
-function reflect(m: i32, later: i32, x: usize, ldx: i32, work: usize): f64 {
-  clear(work, later + 1);
-  subtractTransposedProduct(m - 1, later + 1, x + 8, ldx, x + 8, work); // x below its first entry times itself and what follows
-  const x0 = load<f64>(x), norm = Math.sqrt(x0 * x0 - load<f64>(work));
-  setF64(work, 0, x0 > 0 ? -norm : norm);
-  if (norm == 0) return 0;
-  const v0 = x0 > 0 ? x0 + norm : x0 - norm, tau = 1 / (norm * (norm + Math.abs(x0)));
-  store<f64>(x, v0);
-  for (let q = 1; q <= later; ++q) setF64(work, q, tau * (v0 * load<f64>(entry(x, ldx, 0, q)) - f64At(work, q)));
-  multiply(m, later, 1, x, ldx, work + 8, 1, 1, x + bytes(ldx), ldx, SUBTRACT);
-  return tau;
+/** One row of the strip in passColumn: gathered from `from` for q = 0, else relieved of (entry q − 1) × w; then kept at p. */
+// @ts-ignore: decorator
+@inline function rowLow(q: i32, p: usize, from: usize, w: v128): v128 {
+  if (q == 0) {
+    const low = v128.load(from);
+    v128.store(p, low);
+    return low;
+  }
+  let low = v128.load(p);
+  if (q == 1) { low = nmadd(lane(0, low, low), w, low); v128.store(p, low); }
+  return low;
+}
+// @ts-ignore: decorator
+@inline function rowHigh(q: i32, p: usize, from: usize, before: v128, w: v128): v128 {
+  if (q == 0) {
+    const high = v128.load(from, 16);
+    v128.store(p, high, 16);
+    return high;
+  }
+  let high = v128.load(p, 16);
+  high = nmadd(q < 3 ? lane(q - 1, before, before) : lane(2, high, high), w, high);
+  v128.store(p, high, 16);
+  return high;
 }
 
-/** C := (I − V T Vᵀ)ᵀ C with V m × w, C m × n. work f64[2·w·n]. */
-function apply(m: i32, w: i32, v: usize, ldv: i32, t: usize, ldt: i32, n: i32, c: usize, ldc: i32, work: usize): void {
-  const turned = work + bytes(w * n);
-  multiplyTransposed(w, n, m, v, ldv, c, ldc, work, w, ASSIGN);
-  multiplyTransposed(w, n, w, t, ldt, work, w, turned, w, ASSIGN);
-  multiply(m, n, w, v, ldv, turned, 1, w, c, ldc, SUBTRACT);
+/** The strip's rows p … end: takes away (entry q − 1) × w, or for q = 0 gathers them from rows that lie `row` bytes apart; then sums
+ *  (entry q) × row. Returns the largest |entry q|; `best` gets its row (found without a branch: where it lies is anybody's guess). */
+// @ts-ignore: decorator
+@inline function passColumn(q: i32, p: usize, end: usize, from: usize, row: usize, w0: v128, w1: v128): f64 {
+  let s0 = f64x2.splat(0), s1 = s0, largest = s0, at = i64x2.splat(p), here = at;
+  const next = i64x2.splat(32);
+  for (; p < end; p += 32, from += row) {
+    const before = v128.load(p), low = rowLow(q, p, from, w0), high = rowHigh(q, p, from, before, w1), x = lane(q, low, high);
+    s0 = madd(x, low, s0);
+    s1 = madd(x, high, s1);
+    const size = f64x2.abs(x), isLarger = f64x2.gt(size, largest);
+    largest = f64x2.pmax(largest, size);
+    at = v128.bitselect(here, at, isLarger);
+    here = i64x2.add(here, next);
+  }
+  v128.store(sums, s0);
+  v128.store(sums, s1, 16);
+  store<u32>(best, i32x4.extract_lane(at, 0));
+  return f64x2.extract_lane(largest, 0);
 }
 
-/** Triangularizes w ≤ 4 columns one by one; V and T as above, entries above the diagonal of V and below that of T are zero before. */
-function reduceColumns(m: i32, w: i32, a: usize, lda: i32, v: usize, ldv: i32, t: usize, ldt: i32, work: usize): void {
-  for (let j = 0; j < w; ++j) {
-    const x = entry(a, lda, j, j), vj = entry(v, ldv, j, j), rows = m - j, tj = entry(t, ldt, 0, j);
-    const tau = reflect(rows, w - j - 1, x, lda, work);
-    setF64(tj, j, tau);
-    if (tau == 0) continue; // v stays zero
-    for (let i = 0; i < rows; ++i) setF64(vj, i, f64At(x, i));
-    setF64(x, 0, f64At(work, 0));
-    clear(x + 8, rows - 1);
-    // Column j of T above its diagonal: −τ·T·(Vᵀ v).
-    clear(work, j);
-    subtractTransposedProduct(rows, j, v + bytes(j), ldv, vj, work);
-    for (let i = 0; i < j; ++i) {
-      let s = 0.0;
-      for (let q = i; q < j; ++q) s += load<f64>(entry(t, ldt, i, q)) * f64At(work, q);
-      setF64(tj, i, tau * s);
+/** Triangularizes four columns (or the last few, the rest zeros) gathered in v, `len` rows of four; v becomes V, T and the corner are set.
+ *  ends i32[cols], base: rows of a finished before; rows are exchanged in `a` too (its first unfinished row), from the byte `after` of a
+ *  row on. leads[i] becomes the column, the strip's first being `column`, of its row i. Returns the rows finished.
+ *  A finished row's later entries in v are zeros, so each column of V begins at its own pivot. */
+function reduceStrip(
+  cols: i32, len: i32, ends: usize, base: i32, v: usize, from: usize, strideFrom: usize, a: usize, row: usize, after: usize, leads: usize, column: i32,
+): i32 {
+  const zero = f64x2.splat(0), end = v + (<usize>len << 5);
+  let r = 0, w0 = zero, w1 = zero;
+  for (let k: usize = 0; k < 128; k += 16) v128.store(t + k, zero);
+  for (let q = 0; q < cols; ++q) {
+    const pivot = v + (<usize>r << 5);
+    let largest: f64;
+    if (q == 0) largest = passColumn(0, pivot, end, from, strideFrom, w0, w1);
+    else if (q == 1) largest = passColumn(1, pivot, end, 0, 0, w0, w1);
+    else if (q == 2) largest = passColumn(2, pivot, end, 0, 0, w0, w1);
+    else largest = passColumn(3, pivot, end, 0, 0, w0, w1);
+    w0 = zero;
+    w1 = zero;
+    if (largest == 0) continue;
+    if (Math.abs(f64At(pivot, q)) < SMALL * largest) {
+      const other = load<u32>(best), into = a + (other - v >> 5) * row, own = a + <usize>r * row;
+      swapPairs(pivot, other, pivot + 32);
+      swapPairs(own + after, into + after, own + row);
     }
-  }
-}
-
-function reduceBlock(m: i32, w: i32, a: usize, lda: i32, v: usize, ldv: i32, t: usize, ldt: i32, work: usize): void {
-  if (w <= 4) { reduceColumns(m, w, a, lda, v, ldv, t, ldt, work); return; }
-  const w1 = (w + 7 >> 3) << 2, w2 = w - w1;
-  reduceBlock(m, w1, a, lda, v, ldv, t, ldt, work);
-  apply(m, w1, v, ldv, t, ldt, w2, entry(a, lda, 0, w1), lda, work);
-  const v2 = entry(v, ldv, w1, w1), t2 = entry(t, ldt, w1, w1), t12 = entry(t, ldt, 0, w1);
-  reduceBlock(m - w1, w2, entry(a, lda, w1, w1), lda, v2, ldv, t2, ldt, work);
-  // T₁₂ = −T₁·(V₁ᵀV₂)·T₂
-  multiplyTransposed(w1, w2, m - w1, v + bytes(w1), ldv, v2, ldv, work, w1, ASSIGN);
-  multiply(w1, w2, w2, work, w1, t2, 1, ldt, t12, ldt, ASSIGN);
-  multiply(w1, w2, w1, t, ldt, t12, 1, ldt, work, w1, NEGATE);
-  for (let j = 0; j < w2; ++j) memory.copy(entry(t12, ldt, 0, j), work + bytes(j * w1), bytes(w1));
-}
-
-export function triangularize(m: i32, n: i32, steps: i32, a: usize, lda: i32, scratch: usize): void {
-  assert(steps <= m && steps <= n, "no more steps than rows and columns");
-  const v = scratch, t = v + bytes(m * BLOCK), work = t + bytes(BLOCK * BLOCK), sign = work + bytes(2 * BLOCK * n);
-  if (n <= FEW) {
-    for (let j = 0; j < steps; ++j) {
-      const x = entry(a, lda, j, j);
-      reflect(m - j, n - j - 1, x, lda, work);
-      setF64(x, 0, f64At(work, 0));
-      clear(x + 8, m - j - 1);
+    const kept = corner + (<usize>r << 5), p0 = v128.load(pivot), p1 = v128.load(pivot, 16);
+    v128.store(kept, p0);
+    v128.store(kept, p1, 16);
+    let v0 = 0.0;
+    if (i32At(ends, q) - base - r > 1) {
+      // v = x with σ‖x‖ added to its first entry, so vᵀ times the strip is the sums plus that times the pivot's row.
+      const x0 = f64At(pivot, q), norm = Math.sqrt(f64At(sums, q)), added = x0 > 0 ? norm : -norm, tau = 1 / (norm * (norm + Math.abs(x0)));
+      const lift = f64x2.splat(added), z0 = madd(lift, p0, v128.load(sums)), z1 = madd(lift, p1, v128.load(sums, 16)), by = f64x2.splat(tau);
+      v128.store(sums, z0);
+      v128.store(sums, z1, 16);
+      joinReflection(q, tau);
+      v0 = x0 + added;
+      w0 = f64x2.mul(by, z0);
+      w1 = f64x2.mul(by, z1);
+      // The columns up to q stay.
+      w0 = q == 0 ? f64x2.replace_lane(w0, 0, 0) : zero;
+      if (q == 2) w1 = f64x2.replace_lane(w1, 0, 0); else if (q == 3) w1 = zero;
+      const first = f64x2.splat(v0);
+      v128.store(kept, nmadd(first, w0, p0));
+      v128.store(kept, nmadd(first, w1, p1), 16);
+      setF64(kept, q, -added);
     }
-  } else for (let j = 0; j < steps; j += BLOCK) {
-    const w = min(BLOCK, steps - j), rows = m - j, rest = n - j - w;
-    memory.fill(v, 0, bytes(rows * w));
-    memory.fill(t, 0, bytes(BLOCK * w));
-    reduceBlock(rows, w, entry(a, lda, j, j), lda, v, rows, t, BLOCK, work);
-    if (rest) apply(rows, w, v, rows, t, BLOCK, rest, entry(a, lda, j, j + w), lda, work);
+    setF64(pivot, q, v0);
+    for (let k = q + 1; k < 4; ++k) setF64(pivot, k, 0);
+    setI32(leads, r, column + q);
+    ++r;
   }
-  for (let i = 0; i < steps; ++i) setF64(sign, i, load<f64>(entry(a, lda, i, i)) < 0 ? -1 : 1);
-  for (let j = 0; j < n; ++j) {
-    const column = entry(a, lda, 0, j), end = min(j + 1, steps);
-    for (let i = 0; i < end; ++i) setF64(column, i, f64At(column, i) * f64At(sign, i));
+  return r;
+}
+
+/** Column q of T: tau on the diagonal, above it −tau·T·(Vᵀ v), whose products with the columns before are in `sums`. */
+// @ts-ignore: decorator
+@inline function joinReflection(q: i32, tau: f64): void {
+  for (let i = 0; i < q; ++i) {
+    let s = 0.0;
+    for (let k = i; k < q; ++k) s += f64At(t, 4 * i + k) * f64At(sums, k);
+    setF64(t, 4 * i + q, -tau * s);
   }
+  setF64(t, 5 * q, tau);
+}
+
+/** w := w + low·v and u := u + high·v for entry q of V's row at p; with PAIR there is no high. */
+// @ts-ignore: decorator
+@inline function addTo(w: v128, c: v128, p: usize, q: usize): v128 { return madd(c, v128.load64_splat(p + (q << 3)), w); }
+// @ts-ignore: decorator
+@inline function takeFrom(c: v128, w: v128, p: usize, q: usize): v128 { return nmadd(w, v128.load64_splat(p + (q << 3)), c); }
+// @ts-ignore: decorator
+@inline function times(w: v128, k: usize): v128 { return f64x2.mul(w, v128.load64_splat(t + (k << 3))); }
+// @ts-ignore: decorator
+@inline function plus(w: v128, from: v128, k: usize): v128 { return madd(from, v128.load64_splat(t + (k << 3)), w); }
+
+/** Two columns of the rows at c: c := c − V Tᵀ Vᵀ c. With FULL the first four rows of V are a triangle. */
+// @ts-ignore: decorator
+@inline function reflectPair(FULL: bool, v: usize, end: usize, c: usize, row: usize): void {
+  let w0 = f64x2.splat(0), w1 = w0, w2 = w0, w3 = w0, p = v, at = c;
+  if (FULL) {
+    w0 = addTo(w0, v128.load(at), p, 0);
+    at += row; p += 32;
+    let x = v128.load(at);
+    w0 = addTo(w0, x, p, 0); w1 = addTo(w1, x, p, 1);
+    at += row; p += 32;
+    x = v128.load(at);
+    w0 = addTo(w0, x, p, 0); w1 = addTo(w1, x, p, 1); w2 = addTo(w2, x, p, 2);
+    at += row; p += 32;
+    x = v128.load(at);
+    w0 = addTo(w0, x, p, 0); w1 = addTo(w1, x, p, 1); w2 = addTo(w2, x, p, 2); w3 = addTo(w3, x, p, 3);
+    at += row; p += 32;
+  }
+  for (; p < end; p += 32, at += row) {
+    const x = v128.load(at);
+    w0 = addTo(w0, x, p, 0); w1 = addTo(w1, x, p, 1); w2 = addTo(w2, x, p, 2); w3 = addTo(w3, x, p, 3);
+  }
+  w3 = plus(plus(plus(times(w3, 15), w0, 3), w1, 7), w2, 11);
+  w2 = plus(plus(times(w2, 10), w0, 2), w1, 6);
+  w1 = plus(times(w1, 5), w0, 1);
+  w0 = times(w0, 0);
+  p = v; at = c;
+  if (FULL) {
+    v128.store(at, takeFrom(v128.load(at), w0, p, 0));
+    at += row; p += 32;
+    v128.store(at, takeFrom(takeFrom(v128.load(at), w0, p, 0), w1, p, 1));
+    at += row; p += 32;
+    v128.store(at, takeFrom(takeFrom(takeFrom(v128.load(at), w0, p, 0), w1, p, 1), w2, p, 2));
+    at += row; p += 32;
+    v128.store(at, takeFrom(takeFrom(takeFrom(takeFrom(v128.load(at), w0, p, 0), w1, p, 1), w2, p, 2), w3, p, 3));
+    at += row; p += 32;
+  }
+  for (; p < end; p += 32, at += row)
+    v128.store(at, takeFrom(takeFrom(takeFrom(takeFrom(v128.load(at), w0, p, 0), w1, p, 1), w2, p, 2), w3, p, 3));
+}
+
+/** The same for four columns. */
+// @ts-ignore: decorator
+@inline function reflectFour(FULL: bool, v: usize, end: usize, c: usize, row: usize): void {
+  let w0 = f64x2.splat(0), w1 = w0, w2 = w0, w3 = w0, u0 = w0, u1 = w0, u2 = w0, u3 = w0, p = v, at = c;
+  if (FULL) {
+    let x = v128.load(at), y = v128.load(at, 16);
+    w0 = addTo(w0, x, p, 0); u0 = addTo(u0, y, p, 0);
+    at += row; p += 32;
+    x = v128.load(at); y = v128.load(at, 16);
+    w0 = addTo(w0, x, p, 0); u0 = addTo(u0, y, p, 0);
+    w1 = addTo(w1, x, p, 1); u1 = addTo(u1, y, p, 1);
+    at += row; p += 32;
+    x = v128.load(at); y = v128.load(at, 16);
+    w0 = addTo(w0, x, p, 0); u0 = addTo(u0, y, p, 0);
+    w1 = addTo(w1, x, p, 1); u1 = addTo(u1, y, p, 1);
+    w2 = addTo(w2, x, p, 2); u2 = addTo(u2, y, p, 2);
+    at += row; p += 32;
+    x = v128.load(at); y = v128.load(at, 16);
+    w0 = addTo(w0, x, p, 0); u0 = addTo(u0, y, p, 0);
+    w1 = addTo(w1, x, p, 1); u1 = addTo(u1, y, p, 1);
+    w2 = addTo(w2, x, p, 2); u2 = addTo(u2, y, p, 2);
+    w3 = addTo(w3, x, p, 3); u3 = addTo(u3, y, p, 3);
+    at += row; p += 32;
+  }
+  for (; p < end; p += 32, at += row) {
+    const x = v128.load(at), y = v128.load(at, 16);
+    w0 = addTo(w0, x, p, 0); u0 = addTo(u0, y, p, 0);
+    w1 = addTo(w1, x, p, 1); u1 = addTo(u1, y, p, 1);
+    w2 = addTo(w2, x, p, 2); u2 = addTo(u2, y, p, 2);
+    w3 = addTo(w3, x, p, 3); u3 = addTo(u3, y, p, 3);
+  }
+  w3 = plus(plus(plus(times(w3, 15), w0, 3), w1, 7), w2, 11);
+  u3 = plus(plus(plus(times(u3, 15), u0, 3), u1, 7), u2, 11);
+  w2 = plus(plus(times(w2, 10), w0, 2), w1, 6);
+  u2 = plus(plus(times(u2, 10), u0, 2), u1, 6);
+  w1 = plus(times(w1, 5), w0, 1);
+  u1 = plus(times(u1, 5), u0, 1);
+  w0 = times(w0, 0);
+  u0 = times(u0, 0);
+  p = v; at = c;
+  if (FULL) {
+    v128.store(at, takeFrom(v128.load(at), w0, p, 0));
+    v128.store(at, takeFrom(v128.load(at, 16), u0, p, 0), 16);
+    at += row; p += 32;
+    v128.store(at, takeFrom(takeFrom(v128.load(at), w0, p, 0), w1, p, 1));
+    v128.store(at, takeFrom(takeFrom(v128.load(at, 16), u0, p, 0), u1, p, 1), 16);
+    at += row; p += 32;
+    v128.store(at, takeFrom(takeFrom(takeFrom(v128.load(at), w0, p, 0), w1, p, 1), w2, p, 2));
+    v128.store(at, takeFrom(takeFrom(takeFrom(v128.load(at, 16), u0, p, 0), u1, p, 1), u2, p, 2), 16);
+    at += row; p += 32;
+    v128.store(at, takeFrom(takeFrom(takeFrom(takeFrom(v128.load(at), w0, p, 0), w1, p, 1), w2, p, 2), w3, p, 3));
+    v128.store(at, takeFrom(takeFrom(takeFrom(takeFrom(v128.load(at, 16), u0, p, 0), u1, p, 1), u2, p, 2), u3, p, 3), 16);
+    at += row; p += 32;
+  }
+  for (; p < end; p += 32, at += row) {
+    v128.store(at, takeFrom(takeFrom(takeFrom(takeFrom(v128.load(at), w0, p, 0), w1, p, 1), w2, p, 2), w3, p, 3));
+    v128.store(at, takeFrom(takeFrom(takeFrom(takeFrom(v128.load(at, 16), u0, p, 0), u1, p, 1), u2, p, 2), u3, p, 3), 16);
+  }
+}
+
+function reflectRows(isFull: bool, v: usize, end: usize, c: usize, row: usize, columns: i32): void {
+  if (isFull) {
+    for (; columns >= 4; columns -= 4, c += 32) reflectFour(true, v, end, c, row);
+    if (columns) reflectPair(true, v, end, c, row);
+  } else {
+    for (; columns >= 4; columns -= 4, c += 32) reflectFour(false, v, end, c, row);
+    if (columns) reflectPair(false, v, end, c, row);
+  }
+}
+
+export function triangularize(
+  columns: i32, a: usize, ld: i32, ends: usize, first: i32, to: i32, done: i32, leads: usize, scratch: usize,
+): i32 {
+  assert((ld & 1) == 0 && ld >= columns && (first & 3) == 0, "rows of even length, strips of four");
+  const row = bytes(ld), v = scratch;
+  for (let j = first; j < to; j += 4) {
+    const cols = min(4, columns - j), len = i32At(ends, j + cols - 1) - done;
+    if (len <= 0) continue;
+    const top = a + <usize>done * row, end = v + (<usize>len << 5);
+    let from = top + bytes(j), strideFrom = row;
+    if (cols < 4) { // the carried part begins here: zeros in its place
+      for (let p = v; p < end; p += 32, from += row) for (let q = 0; q < 4; ++q) setF64(p, q, q < cols ? f64At(from, q) : 0);
+      from = v;
+      strideFrom = 32;
+    }
+    // Whole pairs of columns are exchanged and reflected: what lies in the strip itself is written afterwards.
+    const after = j + cols & ~1;
+    const rows = reduceStrip(cols, len, ends + (<usize>j << 2), done, v, from, strideFrom, top, row, bytes(after), leads + (<usize>done << 2), j);
+    if (f64At(t, 0) != 0 || f64At(t, 5) != 0 || f64At(t, 10) != 0 || f64At(t, 15) != 0)
+      reflectRows(rows == 4, v, end, top + bytes(after), row, ld - after);
+    for (let i = 0; i < rows; ++i) {
+      const into = top + <usize>i * row + bytes(j);
+      for (let q = 0; q < cols; ++q) setF64(into, q, f64At(corner, 4 * i + q));
+    }
+    done += rows;
+  }
+  return done;
 }

@@ -170,3 +170,18 @@ export function pivotSpread(f: Factor, diagonal: usize): f64 {
   }
   return spread;
 }
+
+/** The caller's unknown j with the largest A[j, j] ÷ L[j, j]²: the one of which the least is left, given those eliminated before it. */
+export function weakestUnknown(f: Factor, diagonal: usize): i32 {
+  const s = f.symbolic;
+  let weakest = 0, spread: f64 = 0;
+  for (let t = 0; t < s.supernodes; ++t) {
+    const first = i32At(s.first, t), width = i32At(s.first, t + 1) - first, step = i32At(s.lead, t) + 1;
+    const panel = f.panels + (<usize>u32At(s.panel, t) << 3);
+    for (let j = 0; j < width; ++j) {
+      const unknown = i32At(s.order, first + j), root = f64At(panel, j * step), ratio = f64At(diagonal, unknown) / (root * root);
+      if (ratio > spread) { spread = ratio; weakest = unknown; }
+    }
+  }
+  return weakest;
+}

@@ -2,8 +2,9 @@
 import { readFileSync } from "node:fs";
 import { type Command, InvalidArgumentError, Option } from "commander";
 import { OptionError } from "../errors.js";
-import type { CholeskyFactor } from "../matrix/cholesky-factor.js";
+import type { CholeskyFactor, RowStatistics } from "../matrix/cholesky-factor.js";
 import { factorizeAsync } from "../matrix/factorize.js";
+import { factorizeRowsAsync } from "../matrix/factorize-rows.js";
 import { type MatrixMarketColumns, readMatrixMarket } from "../matrix/matrix-market-reader.js";
 import { columnsOfEntries } from "../matrix/sparse-columns.js";
 import { SymmetricMatrix } from "../matrix/symmetric-matrix.js";
@@ -17,7 +18,10 @@ interface InverseOptions {
   json?: boolean;
   csv?: boolean;
   ordering: "automatic" | "minimum-degree" | "nested-dissection" | "natural";
+  route?: Route;
 }
+
+type Route = "automatic" | "information" | "orthogonal";
 
 /** "3,7" → [3, 7]; the file counts from 1, and so does the command. */
 function columnList(text: string): number[] {
@@ -42,53 +46,65 @@ export function addInverseCommand(program: Command, loadKernel: () => Promise<vo
         .choices(["automatic", "minimum-degree", "nested-dissection", "natural"])
         .default("automatic"),
     )
+    .addOption(
+      new Option(
+        "--route <name>",
+        "for a rectangular matrix: by AᵀA, by its rows, or as the condition asks (automatic, the default)",
+      ).choices(["automatic", "information", "orthogonal"]),
+    )
     .helpOption("--help", "print this help")
     .exitOverride()
     .action(async (file: string, options: InverseOptions) => {
-      const matrix = matrixOf(readMatrixMarket(readFileSync(file === "-" ? 0 : file, "utf8")));
-      const outside = options.columns?.find((column) => column > matrix.order);
-      if (outside) throw new OptionError(`--columns names ${outside}; the matrix has columns 1 to ${matrix.order}.`, { option: "columns" });
+      const matrix = readMatrixMarket(readFileSync(file === "-" ? 0 : file, "utf8"));
+      const { rows, columns: order } = matrix;
+      const isDesign = rows !== order;
+      if (options.route && !isDesign)
+        throw new OptionError(`--route is for rectangular matrices; this one is ${rows} × ${order}: leave it out.`, { option: "route" });
+      const outside = options.columns?.find((column) => column > order);
+      if (outside) throw new OptionError(`--columns names ${outside}; the matrix has columns 1 to ${order}.`, { option: "columns" });
+      if (isDesign) process.stderr.write(`sigmatide: the matrix is ${rows} × ${order}: taken as a design matrix A, and AᵀA is inverted\n`);
+      const symmetric = isDesign ? undefined : symmetricFrom(matrix);
       await loadKernel();
-      for (const text of await textOf(matrix, options)) process.stdout.write(text);
+      const { ordering, route } = options;
+      const factorOf = (onProgress: (fraction: number) => void): Promise<CholeskyFactor> =>
+        symmetric ? factorizeAsync(symmetric, { ordering, onProgress }) : factorizeRowsAsync(matrix, { ordering, route, onProgress });
+      for (const text of await textOf(order, factorOf, options)) process.stdout.write(text);
     });
 }
 
-function matrixOf(file: MatrixMarketColumns): SymmetricMatrix {
-  const { rows, columns, columnPointers, rowIndices, values, symmetric } = file;
-  if (rows !== columns) {
-    process.stderr.write(`sigmatide: the matrix is ${rows} × ${columns}: taken as a design matrix A, and AᵀA is inverted\n`);
-    return SymmetricMatrix.fromNormalEquations(file);
-  }
+function symmetricFrom({ rows, columnPointers, rowIndices, values, symmetric }: MatrixMarketColumns): SymmetricMatrix {
   if (symmetric) return SymmetricMatrix.adopt({ order: rows, columnPointers, rowIndices, values });
   return SymmetricMatrix.fromColumns({ order: rows, columnPointers, rowIndices, values, triangle: "full" });
 }
 
-async function textOf(matrix: SymmetricMatrix, options: InverseOptions): Promise<Iterable<string>> {
+async function textOf(
+  order: number,
+  factorOf: (onProgress: (fraction: number) => void) => Promise<CholeskyFactor>,
+  options: InverseOptions,
+): Promise<Iterable<string>> {
   const progress = progressOn(process.stderr, "factor and inverse");
+  let rows: RowStatistics | undefined;
   try {
-    const needsInverse = !options.columns;
     // The selected inverse costs about twice the factor.
-    const factor = await factorizeAsync(matrix, {
-      ordering: options.ordering,
-      onProgress: (fraction) => progress.show(needsInverse ? fraction / 3 : fraction),
-    });
+    const factor = await factorOf((fraction) => progress.show(options.columns ? fraction : fraction / 3));
+    rows = factor.statistics.rows;
     try {
-      return await answer(matrix, factor, options, (fraction) => progress.show((1 + 2 * fraction) / 3));
+      return await answer(order, factor, options, (fraction) => progress.show((1 + 2 * fraction) / 3));
     } finally {
       factor.dispose();
     }
   } finally {
     progress.end();
+    if (rows) process.stderr.write(`sigmatide: ${rows.route} route: ${rows.because}\n`);
   }
 }
 
 async function answer(
-  matrix: SymmetricMatrix,
+  order: number,
   factor: CholeskyFactor,
   { columns, pattern, json, csv }: InverseOptions,
   onProgress: (fraction: number) => void,
 ): Promise<Iterable<string>> {
-  const { order } = matrix;
   const unknowns = Int32Array.from({ length: order }, (_, k) => k + 1);
   const asJson = (value: object) => [`${JSON.stringify(value)}\n`];
   const format = csv ? "csv" : "table";
@@ -109,7 +125,9 @@ async function answer(
     if (json) return asJson({ order, rows: [...rows], columns: [...columnOf], values: [...inverse.values] });
     return tableText({ headings: ["row", "column", "value"], columns: [rows, columnOf, inverse.values], indices: 2 }, format);
   }
-  const variances = await factor.inverseDiagonalAsync({ onProgress });
+  // Whoever's rows needed the orthogonal route wants the digits that it kept.
+  const method = factor.statistics.rows?.route === "orthogonal" ? "squares" : "selected";
+  const variances = await factor.inverseDiagonalAsync({ method, onProgress });
   if (json) return asJson({ order, diagonal: [...variances] });
   const deviations = variances.map(Math.sqrt);
   return tableText(

@@ -55,8 +55,9 @@ export async function run(words: readonly string[]): Promise<number> {
 function exitCodeOf(error: unknown): number {
   if (error instanceof CommanderError) return error.exitCode === 0 ? exits.fine : exits.badInput; // commander has printed it
   if (error instanceof SigmatideError) {
-    const { column } = error.details;
-    const inFile = typeof column === "number" ? ` (Counting from 1, as the file does, that is column ${column + 1}.)` : "";
+    const { column, row } = error.details;
+    const place = typeof column === "number" ? `column ${column + 1}` : typeof row === "number" ? `row ${row + 1}` : "";
+    const inFile = place ? ` (Counting from 1, as the file does, that is ${place}.)` : "";
     process.stderr.write(`sigmatide: ${error.message}${inFile}\n`);
     return exits.badInput;
   }

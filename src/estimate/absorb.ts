@@ -66,7 +66,7 @@ function eliminate(
     a.set(residual, columns * m + top);
     top += rows;
   }
-  sortRows(a, m);
+  sortRows(a, m, columns);
   const own = eliminateColumns(a, m, 0, 0, d);
   const kept = eliminateColumns(a, m, own, d, columns);
   let squares = 0;

@@ -34,6 +34,9 @@ export function firstOrderBound({ baseCondition, leafCondition, addedGrowth, rem
   return ROUNDING * (baseCondition * removedGrowth + columns + growth);
 }
 
+/** The bound on what weights have lost that were whitened by a matrix of this condition; none with deviations. */
+export const boundOfNoise = (condition: number): number => (condition > 1 ? ROUNDING * condition : 0);
+
 /** The bound on blocks from a base alone. */
 export const boundOfBase = (condition: number): number =>
   firstOrderBound({ baseCondition: condition, leafCondition: 0, addedGrowth: 1, removedReach: 0, removedGrowth: 1 });

@@ -8,7 +8,7 @@ import { type Base, baseSteps, isSingular, type Singular } from "./base.js";
 import { boundOfBase, closedBound } from "./bound.js";
 import { assemblySteps } from "./information.js";
 import { type Leaf, splitLeaves } from "./leaf.js";
-import { backwardCost, carryingCost, inverseCost, rebaseCost, rebasePays, subtractionSpoils } from "./policy.js";
+import { backwardCost, carryingCost, inverseCost, keptLimit, rebaseCost, rebasePays, subtractionSpoils } from "./policy.js";
 import { countRows, type OwnedRows, System, type SystemEvent, type World } from "./system.js";
 import { type SavedTracked, Tracked } from "./tracked.js";
 import { findUndetermined } from "./undetermined.js";
@@ -133,7 +133,7 @@ export class Engine {
     if (!this.#system) return 0;
     if (!track) return this.baseBound;
     if (this.system.events.length === 0 && !this.tracked.valid) return this.baseBound;
-    if (this.#keepsNumbers() && this.#keptAreGood(tolerance)) return Math.max(this.baseBound, this.trackedBound);
+    if (this.#keepsNumbers() && this.keptAreGood(tolerance)) return Math.max(this.baseBound, this.trackedBound);
     if (!this.tracked.valid) return this.#mostOfNewBase();
     // Kept after all, when they turn out to have lost less than they might: within the tolerance if a fresh block is.
     return Math.max(this.#mostOfNewBase(), this.baseBound > tolerance ? this.trackedBound : Math.min(this.trackedBound, tolerance));
@@ -190,7 +190,7 @@ export class Engine {
     if (track && this.tracked.valid && subtractionSpoils(strength * this.tracked.ratio, this.tracked.error)) {
       // At worst; what it did is known once the kept numbers have taken it in.
       this.tracked.refresh(this.system, column);
-      if (subtractionSpoils(this.tracked.ratio, this.tracked.error)) {
+      if (this.trackedBound > keptLimit(this.#baseBound)) {
         this.tracked.valid = false;
         reasons.push(`a reading made what it reads ${strength.toExponential(1)} times stronger: kept marginals are computed afresh`);
         outcome = { ...outcome, because: `${outcome.because}; ${reasons[0]}` };
@@ -456,7 +456,7 @@ export class Engine {
     const isCurrent = this.tracked.isCurrent(system, column);
     if (isCurrent || this.#keepsNumbers()) {
       if (!isCurrent) this.tracked.refresh(system, column);
-      if (this.#keptAreGood(tolerance)) return;
+      if (this.keptAreGood(tolerance)) return;
     }
     if (system.events.length > 0) {
       if (!this.#renewedForReading(world)) {
@@ -480,9 +480,8 @@ export class Engine {
   }
 
   /** Whether kept numbers are as good as they have to be, or nothing would be gained. */
-  #keptAreGood(tolerance: number): boolean {
-    const bound = this.trackedBound;
-    return !subtractionSpoils(bound / this.baseBound, this.baseBound) && (bound <= tolerance || this.baseBound > tolerance);
+  keptAreGood(tolerance: number): boolean {
+    return this.trackedBound <= Math.min(tolerance, keptLimit(this.baseBound)) || this.baseBound > tolerance;
   }
 
   /** What `restore` needs, without copies of rows; undefined before the first commit. */

@@ -6,11 +6,13 @@
 /** What is left of a column below the rows done, beside the whole of it: rounding, so it depends on the columns done. */
 const DEPENDENT = 1e-12;
 
-/** Sorts the rows of A (rows × columns, column-major) so that the largest entry of each is never smaller than that of the next. */
-export function sortRows(a: Float64Array, rows: number): void {
+/** Sorts the rows of A (rows × columns, column-major) so that the largest of the first `deciding` entries of each is never smaller than
+ *  that of the next. */
+export function sortRows(a: Float64Array, rows: number, deciding: number): void {
   const columns = a.length / rows;
   const largest = new Float64Array(rows);
-  for (let c = 0; c < columns; c += 1) for (let i = 0; i < rows; i += 1) largest[i] = Math.max(largest[i]!, Math.abs(a[c * rows + i]!));
+  for (let c = 0; c < deciding; c += 1) for (let i = 0; i < rows; i += 1) largest[i] = Math.max(largest[i]!, Math.abs(a[c * rows + i]!));
+  if (largest.every((size, i) => i === 0 || size <= largest[i - 1]!)) return;
   const order = [...largest.keys()].sort((i, j) => largest[j]! - largest[i]!);
   const column = new Float64Array(rows);
   for (let c = 0; c < columns; c += 1) {

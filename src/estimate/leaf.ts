@@ -1,4 +1,5 @@
 // Orthogonal rotation of rows that read a new state: the first rows then define it given older states, the rest read older states alone.
+import { sortRows } from "./householder.js";
 import type { WhitenedRows } from "./whitened.js";
 
 /** Rows of a new state rotated: R x + Σ G_p x_p = z. */
@@ -34,7 +35,7 @@ function splitLeaf(
   for (const rows of pool) for (const s of rows.states) if (s !== state && !states.includes(s)) states.push(s);
   const { a, m, columns, columnOf } = gather([state, ...states], pool, dimensionOf);
   const squares = new Float64Array(columns);
-  for (let k = 0; k < columns * m; k += 1) squares[Math.floor(k / m)]! += a[k]! * a[k]!;
+  for (let c = 0, k = 0; c < columns; c += 1) for (let end = k + m; k < end; k += 1) squares[c]! += a[k]! * a[k]!;
   if (m < d || !reflect(a, m, d, columns + 1, RANK_TOLERANCE)) return undefined;
 
   const numbers = new Float64Array(d * columns);
@@ -85,22 +86,8 @@ function gather(
     a.set(residual, columns * m + top);
     top += rows;
   }
-  sortRows(a, m, columns);
+  sortRows(a, m, columns); // so that weak rows beside strong ones keep their digits
   return { a, m, columns, columnOf };
-}
-
-/** Rows by decreasing largest entry: reflections then leave errors of each row's own size, so that weak rows beside strong ones keep their
- *  digits. Sources: Powell, Reid (1969); Cox, Higham, "Stability of Householder QR factorization for weighted least squares" (1998). */
-function sortRows(a: Float64Array, m: number, columns: number): void {
-  const sizes = new Float64Array(m);
-  for (let k = 0; k < columns * m; k += 1) sizes[k % m] = Math.max(sizes[k % m]!, Math.abs(a[k]!));
-  if (sizes.every((size, i) => i === 0 || size <= sizes[i - 1]!)) return;
-  const order = Array.from(sizes.keys()).sort((i, j) => sizes[j]! - sizes[i]!);
-  const column = new Float64Array(m);
-  for (let at = 0; at < a.length; at += m) {
-    for (let i = 0; i < m; i += 1) column[i] = a[at + order[i]!]!;
-    a.set(column, at);
-  }
 }
 
 /** Householder reflections that make the first d of `columns` columns upper triangular; false when one of them leaves no more than

@@ -24,6 +24,9 @@ export interface NoiseRoot {
   readonly form: "standardDeviations" | "covariance" | "information";
   /** The deviations (length rows), or the lower Cholesky factor C, rows × rows, row-major, of the matrix that was given. */
   readonly root: Float64Array;
+  /** tr D M⁻¹ D of the matrix M that was given, with D² its diagonal; 1 with deviations. Times a unit of rounding it is how far the weights of
+   *  the whitened rows are off (Demmel 1989; see `bound.ts`). */
+  readonly condition: number;
 }
 
 /** How far mirror images may differ, relative to the geometric mean of their diagonal entries: products such as J Σ Jᵀ come with rounding
@@ -45,12 +48,34 @@ export function noiseRoot(noise: Noise, rows: number, measurement?: string): Noi
       measurement,
     );
   }
-  if (standardDeviations !== undefined) return { form: "standardDeviations", root: deviationsOf(standardDeviations, rows, measurement) };
+  if (standardDeviations !== undefined)
+    return { form: "standardDeviations", root: deviationsOf(standardDeviations, rows, measurement), condition: 1 };
   const form = covariance === undefined ? "information" : "covariance";
   const root = new Float64Array(rows * rows);
   matrixInto(root, form, (covariance ?? information)!, rows, rows, measurement);
   choleskyInPlace(root, rows, form, measurement);
-  return { form, root };
+  return { form, root, condition: scaledCondition(root, rows) };
+}
+
+/** tr D (C Cᵀ)⁻¹ D, D² the diagonal of C Cᵀ. Cost: rows³ ÷ 6. */
+function scaledCondition(c: Float64Array, n: number): number {
+  const diagonal = Float64Array.from({ length: n }, (_, i) => {
+    let sum = 0;
+    for (let k = 0; k <= i; k += 1) sum += c[i * n + k]! ** 2;
+    return sum;
+  });
+  let trace = 0;
+  const x = new Float64Array(n);
+  for (let j = 0; j < n; j += 1) {
+    // Column j of C⁻¹: its squares are entry j of the diagonal of (C Cᵀ)⁻¹.
+    for (let i = j; i < n; i += 1) {
+      let sum = i === j ? 1 : 0;
+      for (let k = j; k < i; k += 1) sum -= c[i * n + k]! * x[k]!;
+      x[i] = sum / c[i * n + i]!;
+      trace += diagonal[j]! * x[i]! ** 2;
+    }
+  }
+  return trace;
 }
 
 function deviationsOf(given: ArrayLike<number>, rows: number, measurement: string | undefined): Float64Array {

@@ -39,6 +39,8 @@ export interface EstimateContents {
   readonly condensed: readonly WhitenedRows[];
   readonly absorbedSquares: number;
   readonly absorbedFreedom: number;
+  readonly absorbedBound: number;
+  readonly noiseCondition: number;
   readonly newStates: readonly StateId[];
   readonly added: readonly number[];
   readonly withdrawn: readonly number[];

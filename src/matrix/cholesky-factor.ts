@@ -3,10 +3,10 @@ import { status } from "../../bindings/kernel.js";
 import { kernel } from "../../bindings/loader.js";
 import { bytesAvailable, copyFloats, withLoan, writeFloats } from "../../bindings/memory.js";
 import { runSteps, runStepsInSlices, type SliceOptions, type Steps } from "../../bindings/slices.js";
-import { BusyError, MemoryLimitError, NotPositiveDefiniteError, PatternMismatchError } from "../errors.js";
+import { BusyError, MemoryLimitError, NotPositiveDefiniteError, PatternMismatchError, RowFactorError } from "../errors.js";
 import { finiteNumbersOf, indicesOf, requireIndex, requireKnownOptions, requireLength, requireWord } from "../support/checks.js";
 import { requirePositiveDiagonal } from "./diagonal.js";
-import { diagonalSteps, factorPatternSteps, matrixPatternSteps } from "./inverse-steps.js";
+import { diagonalSteps, factorPatternSteps, matrixPatternSteps, squaredDiagonalSteps } from "./inverse-steps.js";
 import type { KernelFactor } from "./kernel-factor.js";
 import type { OrderingName } from "./options.js";
 import { solveSteps } from "./solve-steps.js";
@@ -25,11 +25,25 @@ export interface FactorStatistics {
   readonly bytes: number;
   /** How the order of elimination was found. */
   readonly ordering: OrderingName;
+  /** How measurement rows became the factor; left out when a matrix was given. */
+  readonly rows?: RowStatistics;
 }
 
-/** Kernel objects that a factor takes over, and the matrix whose pattern they have. */
-interface FactorParts {
-  matrix: SymmetricMatrix;
+/** By which way rows became a factor. */
+export interface RowStatistics {
+  /** `"information"`: Cholesky of JᵀWJ; `"orthogonal"`: Householder reflections of the rows. */
+  readonly route: "information" | "orthogonal";
+  /** Why that one, in a sentence. */
+  readonly because: string;
+  /** The estimate of the condition of JᵀWJ scaled to unit diagonal that the choice rests on; left out where none was made. */
+  readonly condition?: number | undefined;
+  /** Rows that were left out because their weight is zero, ascending. */
+  readonly ignored: readonly number[];
+}
+
+/** Kernel objects that a factor takes over, and the pattern of its matrix. */
+export interface FactorParts {
+  pattern: Pattern;
   symbolic: number;
   factor: number;
   /** The matrix in kernel memory, and room for the values of the next one. */
@@ -42,6 +56,12 @@ interface FactorParts {
 }
 
 type Pattern = Pick<SymmetricMatrix, "order" | "columnPointers" | "rowIndices">;
+
+export interface InverseDiagonalOptions {
+  /** `"selected"`, the default: by the selected inverse. `"squares"`: each entry as ‖L⁻¹e‖², in which nothing cancels: where the condition is bad it keeps
+   *  digits that the other loses, at the cost of a forward solve over each unknown's path in the elimination tree. */
+  method?: "selected" | "squares" | undefined;
+}
 
 export interface SelectedInverseOptions {
   /** `"factor"`, the default: all entries on the pattern of L; `"matrix"`: those on the matrix's own pattern. */
@@ -70,10 +90,9 @@ export class CholeskyFactor {
   #readers = 0;
 
   /** @internal */
-  constructor({ matrix, symbolic, factor, columnStart, rowIndex, values, spareValues, free, statistics }: FactorParts) {
-    const { order, columnPointers, rowIndices } = matrix;
-    this.#pattern = { order, columnPointers, rowIndices };
-    this.#factor = { order, symbolic, handle: new Handle(this, NAME, factor, free) };
+  constructor({ pattern, symbolic, factor, columnStart, rowIndex, values, spareValues, free, statistics }: FactorParts) {
+    this.#pattern = pattern;
+    this.#factor = { order: pattern.order, symbolic, handle: new Handle(this, NAME, factor, free) };
     this.#columnStart = columnStart;
     this.#rowIndex = rowIndex;
     this.#values = values;
@@ -157,22 +176,49 @@ export class CholeskyFactor {
   }
 
   /**
+   * The inverse's block on chosen unknowns, such as one state's: `out[i · k + j] = A⁻¹[unknowns[i], unknowns[j]]`, k = unknowns.length. It is formed as
+   * a square, YᵀY with Y = L⁻¹E, in which nothing cancels: where the condition is bad it keeps digits that `inverseDiagonal` and `selectedInverse` lose.
+   * @param unknowns each in [0, order); their order and repeats are kept.
+   * @throws {IndexRangeError | MemoryLimitError}
+   * Cost: a forward solve with k columns over the unknowns' paths in the elimination tree.
+   */
+  inverseBlock(unknowns: ArrayLike<number>): Float64Array {
+    const address = this.#factor.handle.address;
+    const chosen = indicesOf("unknowns", unknowns, 0, this.order - 1);
+    const count = chosen.length;
+    const what = "The workspace for a block of the inverse";
+    return withLoan(what, (loan) => {
+      const out = loan.room(8 * count * count);
+      if (kernel().inverseBlock(address, loan.ints(chosen), count, out) !== status.ok)
+        throw new MemoryLimitError(what, 8 * count * this.order, bytesAvailable());
+      return copyFloats(out, count * count);
+    });
+  }
+
+  /**
    * The diagonal of the inverse: the variances when A is an information matrix, in (unit of the unknown)².
-   * @throws {MemoryLimitError}
+   * @param options method: `"selected"`, the default, or `"squares"`; see `InverseDiagonalOptions`.
+   * @throws {MemoryLimitError | OptionError}
    * Cost: one selected inverse, about twice the factorization, the first time; a copy after. Source: Takahashi, Fagan, Chen (1973).
    */
-  inverseDiagonal(): Float64Array {
-    this.#factor.handle.address;
-    this.#diagonal ??= runSteps(diagonalSteps(this.#factor));
-    return this.#diagonal.slice();
+  inverseDiagonal(options: InverseDiagonalOptions = {}): Float64Array {
+    return runSteps(this.#diagonalSteps("inverseDiagonal", options, [])).slice();
   }
 
   /** `inverseDiagonal` in slices; see `factorizeAsync` for signal and progress. */
-  async inverseDiagonalAsync(options: SliceOptions = {}): Promise<Float64Array> {
-    requireKnownOptions("inverseDiagonalAsync", options, ["signal", "onProgress"]);
+  async inverseDiagonalAsync(options: InverseDiagonalOptions & SliceOptions = {}): Promise<Float64Array> {
+    const diagonal = await this.#inSlices(this.#diagonalSteps("inverseDiagonalAsync", options, ["signal", "onProgress"]), options);
+    return diagonal.slice();
+  }
+
+  *#diagonalSteps(name: string, options: InverseDiagonalOptions, more: readonly string[]): Steps<Float64Array> {
+    requireKnownOptions(name, options, ["method", ...more]);
+    const { method = "selected" } = options;
+    requireWord("method", method, ["selected", "squares"]);
     this.#factor.handle.address;
-    this.#diagonal ??= await this.#inSlices(diagonalSteps(this.#factor), options);
-    return this.#diagonal.slice();
+    if (method === "squares") return yield* squaredDiagonalSteps(this.#factor);
+    this.#diagonal ??= yield* diagonalSteps(this.#factor);
+    return this.#diagonal;
   }
 
   /**
@@ -222,12 +268,14 @@ export class CholeskyFactor {
    * Factors another matrix with the same pattern in place of this one: no analysis, no allocation in the kernel.
    * @throws {PatternMismatchError | NotPositiveDefiniteError} the factor then still is that of the matrix before.
    * @throws {BusyError} while an asynchronous call reads the factor.
+   * @throws {RowFactorError} on a factor that the orthogonal route made of rows.
    * Cost: the numeric factorization; twice that when it fails.
    */
   refactor(matrix: SymmetricMatrix): void {
     const k = kernel();
     const address = this.#factor.handle.address;
     if (this.#readers > 0) throw new BusyError(NAME);
+    if (this.statistics.rows?.route === "orthogonal") throw new RowFactorError();
     requireSamePattern(this.#pattern, matrix);
     requirePositiveDiagonal(matrix);
     writeFloats(this.#spareValues, matrix.values);

@@ -1,17 +1,13 @@
-// From a matrix to its factor: checks, analysis of the pattern, the memory it will take, numbers.
-import { MemoryLimitError } from "../../bindings/errors.js";
-import { status } from "../../bindings/kernel.js";
+// From a matrix to its factor.
 import { kernel } from "../../bindings/loader.js";
-import { addressOrThrow, bytesAvailable, Loan, requireMemory } from "../../bindings/memory.js";
 import { runSteps, runStepsInSlices, type SliceOptions, type Steps } from "../../bindings/slices.js";
 import { NotPositiveDefiniteError } from "../errors.js";
+import { ANALYSIS_SHARE } from "./analysis-steps.js";
 import { CholeskyFactor } from "./cholesky-factor.js";
 import { requirePositiveDiagonal } from "./diagonal.js";
-import { type CheckedOptions, checkOptions, type FactorizeOptions, factorizeOptionNames, orderingName } from "./options.js";
+import { choleskySteps, factorRoomSteps } from "./factor-room.js";
+import { type CheckedOptions, checkOptions, type FactorizeOptions, factorizeOptionNames } from "./options.js";
 import type { SymmetricMatrix } from "./symmetric-matrix.js";
-
-/** Share of progress that the analysis of the pattern takes: it runs before the work of the numbers can be predicted. */
-const ANALYSIS_SHARE = 0.25;
 
 /**
  * The Cholesky factor of a positive definite matrix: A[order, order] = L Lᵀ for an elimination order that keeps L sparse.
@@ -39,81 +35,15 @@ export async function factorizeAsync(matrix: SymmetricMatrix, options: Factorize
 }
 
 function* factorSteps(matrix: SymmetricMatrix, options: CheckedOptions): Steps<CholeskyFactor> {
-  const k = kernel();
   requirePositiveDiagonal(matrix);
-  const { order, nonzeros } = matrix;
-  const copies = new Loan("The copy of the matrix");
-  let symbolic = 0;
-  let factor = 0;
-  const free = (): void => {
-    if (factor) k.factorRelease(factor);
-    if (symbolic) k.symbolicRelease(symbolic);
-    copies.giveBack();
-  };
+  const room = yield* factorRoomSteps(matrix, options);
   let complete = false;
   try {
-    const columnStart = copies.ints(matrix.columnPointers);
-    const rowIndex = copies.ints(matrix.rowIndices);
-    const values = copies.floats(matrix.values);
-    symbolic = yield* analysisSteps(order, columnStart, rowIndex, options);
-    const bytes = k.factorBytes(symbolic) + 8 * nonzeros;
-    requireMemory("The factor", bytes);
-    const spareValues = copies.room(8 * nonzeros);
-    factor = addressOrThrow("The factor", k.factorCreate(symbolic), bytes);
-    k.factorBegin(factor, values);
-    const result = yield {
-      advance: (budget) => k.factorAdvance(factor, budget),
-      progress: () => k.factorProgress(factor),
-      from: ANALYSIS_SHARE,
-      to: 1,
-    };
-    if (result > 0) throw new NotPositiveDefiniteError(result - 1, k.factorPivot(factor));
+    const failed = yield* choleskySteps(room, ANALYSIS_SHARE, 1);
+    if (failed > 0) throw new NotPositiveDefiniteError(failed - 1, kernel().factorPivot(room.factor));
     complete = true;
-    return new CholeskyFactor({
-      matrix,
-      symbolic,
-      factor,
-      columnStart,
-      rowIndex,
-      values,
-      spareValues,
-      free,
-      statistics: {
-        order,
-        nonzeros: k.symbolicNonzeros(symbolic),
-        flops: k.symbolicFlops(symbolic),
-        supernodes: k.symbolicSupernodes(symbolic),
-        bytes: k.symbolicBytes(symbolic) + bytes + 4 * (order + 1) + 12 * nonzeros,
-        ordering: orderingName(k.symbolicOrdering(symbolic)),
-      },
-    });
+    return new CholeskyFactor(room);
   } finally {
-    if (!complete) free();
-  }
-}
-
-/** Analyses the pattern; the caller releases the symbolic object whose address this returns. */
-function* analysisSteps(order: number, columnStart: number, rowIndex: number, options: CheckedOptions): Steps<number> {
-  const k = kernel();
-  const what = "The analysis of the pattern";
-  const { code, givenOrder, blockSizes } = options;
-  const input = new Loan(what);
-  let job = 0;
-  try {
-    const sizes = blockSizes ? input.ints(blockSizes) : 0;
-    const given = givenOrder ? input.ints(givenOrder) : 0;
-    job = addressOrThrow(what, k.analysisBegin(order, columnStart, rowIndex, blockSizes?.length ?? 0, sizes, code, given, 0), 256);
-    const result = yield {
-      advance: (budget) => k.analysisAdvance(job, budget),
-      progress: () => k.analysisProgress(job),
-      from: 0,
-      to: ANALYSIS_SHARE,
-    };
-    if (result === status.tooLarge) throw new MemoryLimitError("The factor", k.analysisFactorBytes(job), bytesAvailable());
-    if (result === status.outOfMemory) throw new MemoryLimitError(what, 4 * order, bytesAvailable());
-    return addressOrThrow(what, k.analysisFinish(job), 0);
-  } finally {
-    if (job) k.analysisRelease(job);
-    input.giveBack();
+    if (!complete) room.free();
   }
 }

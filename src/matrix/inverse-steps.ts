@@ -1,13 +1,14 @@
 // The selected inverse: its diagonal alone, or its entries on a pattern.
 import { status } from "../../bindings/kernel.js";
 import { kernel } from "../../bindings/loader.js";
-import { addressOrThrow, bytesAvailable, copyFloats, copyInts, requireMemory, withLoan } from "../../bindings/memory.js";
+import { addressOrThrow, bytesAvailable, copyFloats, copyInts, Loan, requireMemory, withLoan } from "../../bindings/memory.js";
 import type { Steps } from "../../bindings/slices.js";
 import { MemoryLimitError } from "../errors.js";
 import type { LowerColumns } from "./compress.js";
 import type { KernelFactor } from "./kernel-factor.js";
 
 const WHAT = "The selected inverse";
+const WHAT_SQUARES = "The workspace for the diagonal of the inverse";
 
 /** Runs the selected inverse, then `read` on its address while it is in memory. */
 function* selectedSteps<T>({ handle, symbolic }: KernelFactor, keepPanels: 0 | 1, read: (inverse: number) => T): Steps<T> {
@@ -33,6 +34,28 @@ function* selectedSteps<T>({ handle, symbolic }: KernelFactor, keepPanels: 0 | 1
 /** The diagonal of the inverse, caller's numbering. */
 export function diagonalSteps(factor: KernelFactor): Steps<Float64Array> {
   return selectedSteps(factor, 0, (inverse) => copyFloats(kernel().inverseDiagonal(inverse) >>> 0, factor.order));
+}
+
+/** The same as sums of squares. */
+export function* squaredDiagonalSteps({ handle, order }: KernelFactor): Steps<Float64Array> {
+  const k = kernel();
+  const loan = new Loan(WHAT_SQUARES);
+  let job = 0;
+  try {
+    const diagonal = loan.room(8 * order);
+    job = addressOrThrow(WHAT_SQUARES, k.squaresBegin(handle.address, diagonal), 128 * order);
+    yield {
+      advance: (budget) => {
+        handle.address;
+        return k.squaresAdvance(job, budget);
+      },
+      progress: () => k.squaresProgress(job),
+    };
+    return copyFloats(diagonal, order);
+  } finally {
+    if (job) k.squaresRelease(job);
+    loan.giveBack();
+  }
 }
 
 /** The inverse's entries at those of the factored matrix, in the same storage order. */

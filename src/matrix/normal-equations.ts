@@ -75,7 +75,8 @@ export function normalEquations(jacobian: SparseColumns, givenWeights?: ArrayLik
   return result;
 }
 
-function weightsOf(given: ArrayLike<number>, rows: number): Float64Array {
+/** Weights of rows, checked, as a fresh array. */
+export function weightsOf(given: ArrayLike<number>, rows: number): Float64Array {
   requireLength("weights", given.length, rows);
   const weights = finiteNumbersOf("weights", given);
   const negative = weights.findIndex((weight) => weight < 0);

@@ -21,7 +21,7 @@ beforeAll(initFacade);
 const networks = kernelBuild === "plain" && !("window" in globalThis) ? 1000 : 100;
 
 describe.each(["all", "none"] as const)("random networks with weights up to 12 orders of magnitude apart, track %s", (track) => {
-  test(`the bound holds in every answer of ${networks}, over 12 commits of arrivals, withdrawals and replacements`, () => {
+  test(`the bound holds in every answer of ${networks}, over 12 commits of arrivals, withdrawals, replacements and forgotten states`, () => {
     const broken: Comparison[] = [];
     let answers = 0;
     let sharp = 0;
@@ -37,9 +37,9 @@ describe.each(["all", "none"] as const)("random networks with weights up to 12 o
     }
     expect(broken).toEqual([]);
     expect(answers).toBeGreaterThan(5 * networks);
-    // And it says something: seldom nothing at all, and in two of five answers no more than four digits away from what was lost.
-    expect(sharp).toBeGreaterThan(0.4 * answers);
-    expect(silent).toBeLessThan(0.05 * answers);
+    // And it says something: nothing at all in less than an eighth, and in a third no more than four digits away from what was lost.
+    expect(sharp).toBeGreaterThan(answers / 3);
+    expect(silent).toBeLessThan(answers / 8);
   });
 });
 

@@ -4,11 +4,16 @@ import { beforeAll, describe, expect, test } from "vitest";
 import { random } from "../../bench/families/random.js";
 import {
   type CholeskyFactor,
+  ColumnRangeError,
   EmptyColumnError,
+  EmptyRowError,
+  type FactorizeRowsOptions,
   factorize,
   factorizeAsync,
+  factorizeRows,
   IndexRangeError,
   LengthError,
+  leastSquares,
   MemoryLimitError,
   memoryUsage,
   NegativeWeightError,
@@ -18,9 +23,11 @@ import {
   NotSymmetricError,
   OptionError,
   PatternMismatchError,
+  RankDeficientError,
   SigmatideError,
   SymmetricMatrix,
   setMemoryLimit,
+  TooFewRowsError,
   WrongTriangleError,
 } from "../../src/index.js";
 import { errorOf, initFacade, randomDominant } from "../support/facade.js";
@@ -55,6 +62,11 @@ const { fromColumns, fromTriplets, fromNormalEquations } = {
   fromNormalEquations: (change: object, weights?: number[]) => () =>
     SymmetricMatrix.fromNormalEquations({ ...jacobian, ...change }, weights),
 };
+
+const rowsCall =
+  (change: object, options: FactorizeRowsOptions = {}) =>
+  () =>
+    factorizeRows({ ...jacobian, ...change }, options);
 
 const wrongCalls: Record<string, WrongCall> = {
   "an order that is negative": { call: fromColumns({ order: -1 }), error: IndexRangeError, details: { what: "order", value: -1 } },
@@ -237,6 +249,71 @@ const wrongCalls: Record<string, WrongCall> = {
     error: NotPositiveDefiniteError,
     details: {},
   },
+  "an unknown past the order in a block": {
+    call: () => factor.inverseBlock([0, ORDER]),
+    error: IndexRangeError,
+    details: { what: "unknowns[1]", value: ORDER },
+  },
+
+  "a negative weight of a row": {
+    call: rowsCall({}, { weights: [1, -2, 1] }),
+    error: NegativeWeightError,
+    details: { row: 1, weight: -2 },
+  },
+  "a weight of a row that is infinite": {
+    call: rowsCall({}, { weights: [1, 1, Number.POSITIVE_INFINITY] }),
+    error: NotFiniteError,
+    details: { what: "weights", position: 2 },
+  },
+  "weights that are not one a row": { call: rowsCall({}, { weights: [1, 1] }), error: LengthError, details: { length: 2, expected: 3 } },
+  "a route that does not exist": {
+    call: rowsCall({}, { route: "orthogonl" as "orthogonal" }),
+    error: OptionError,
+    details: { option: "route", value: "orthogonl" },
+  },
+  "a row without an entry": { call: rowsCall({ rows: 4 }), error: EmptyRowError, details: { row: 3 } },
+  "a column of the rows without an entry": {
+    call: rowsCall({ columns: 3, columnPointers: [0, 2, 4, 4] }),
+    error: EmptyColumnError,
+    details: { column: 2 },
+  },
+  "a column that only rows of weight zero touch": {
+    call: rowsCall({}, { weights: [0, 0, 1] }),
+    error: EmptyColumnError,
+    details: { column: 0 },
+  },
+  "more unknowns than rows": {
+    call: rowsCall({ rows: 1, rowIndices: [0, 0], columnPointers: [0, 1, 2], values: [1, 1] }),
+    error: TooFewRowsError,
+    details: { rows: 1, columns: 2 },
+  },
+  "more unknowns than rows with a weight": {
+    call: rowsCall({ rows: 2, rowIndices: [0, 1, 0, 1] }, { weights: [1, 0] }),
+    error: TooFewRowsError,
+    details: { rows: 1, columns: 2 },
+  },
+  "columns that are multiples of each other": {
+    call: rowsCall({ rowIndices: [0, 1, 0, 1], rows: 2, values: [1, 3, 2, 6] }, { route: "orthogonal" }),
+    error: RankDeficientError,
+    details: {},
+  },
+  "a column of zeros": { call: rowsCall({ values: [1, 1, 0, 0] }), error: RankDeficientError, details: { column: 1, size: 0 } },
+  "a column whose squares overflow": { call: rowsCall({ values: [1, 1, 1e200, 1] }), error: ColumnRangeError, details: { column: 1 } },
+  "a weighted row that overflows": {
+    call: rowsCall({ values: [1, 1e200, 1, 1] }, { weights: [1, 1e300, 1] }),
+    error: NotFiniteError,
+    details: { what: "√weight × value" },
+  },
+  "a right-hand side that is not one number a row": {
+    call: () => leastSquares(jacobian, [1, 2]),
+    error: LengthError,
+    details: { length: 2, expected: 3 },
+  },
+  "NaN on the right-hand side of rows": {
+    call: () => leastSquares(jacobian, [1, Number.NaN, 1]),
+    error: NotFiniteError,
+    details: { what: "residual", position: 1 },
+  },
   "a memory limit that is no number": { call: () => setMemoryLimit(Number.NaN), error: IndexRangeError, details: { what: "bytes" } },
 };
 
@@ -304,6 +381,10 @@ test("a factor past the memory limit is refused with the bytes predicted, before
       () => factor.inverseEntries([0], [5]),
       () => factor.solve(ones(12 * ORDER), 12),
       () => factor.reciprocalCondition(),
+      () => factor.inverseBlock([0, 5]),
+      () => factor.inverseDiagonal({ method: "squares" }),
+      () => leastSquares(jacobian, [1, 2, 4], { route: "orthogonal" }).factor.dispose(),
+      () => factorizeRows(jacobian).dispose(),
     ];
     // Each allocation of a call is refused in turn, until there is room for all of them.
     for (const call of calls) {

@@ -25,7 +25,9 @@ const methods: Record<string, (factor: CholeskyFactor) => unknown> = {
   solveAsync: (factor) => factor.solveAsync(new Float64Array(120)),
   inverseColumns: (factor) => factor.inverseColumns([]),
   inverseEntries: (factor) => factor.inverseEntries([], []),
+  inverseBlock: (factor) => factor.inverseBlock([]),
   inverseDiagonal: (factor) => factor.inverseDiagonal(),
+  "inverseDiagonal as squares": (factor) => factor.inverseDiagonal({ method: "squares" }),
   inverseDiagonalAsync: (factor) => factor.inverseDiagonalAsync(),
   selectedInverse: (factor) => factor.selectedInverse(),
   selectedInverseAsync: (factor) => factor.selectedInverseAsync({ pattern: "matrix" }),
@@ -69,6 +71,8 @@ test("1000 cycles of create, use and dispose leave memory flat", () => {
     factor.solve(new Float64Array(240).fill(1), 2);
     factor.inverseColumns([3, 7]);
     factor.inverseEntries([0, 5], [5, 9]);
+    factor.inverseBlock([3, 7]);
+    factor.inverseDiagonal({ method: "squares" });
     factor.inverseDiagonal();
     factor.selectedInverse();
     factor.refactor(matrix);

@@ -85,6 +85,27 @@ test("a rectangular matrix is a design matrix A: AᵀA is inverted, and standard
   for (const [k, wanted] of [5 / 6, -0.5, -0.5, 0.5].entries()) close(flat[k], wanted);
 });
 
+test("--route takes a design matrix by its rows, or by AᵀA; automatic says which and why", () => {
+  // Läuchli (1961): ones over δ on the diagonal. AᵀA = 1 1ᵀ + δ² I, its inverse (I − 1 1ᵀ ÷ (δ² + 2)) ÷ δ²; in f64 AᵀA is singular for δ = 1e-9.
+  const design = join(folder, "lauchli.mtx");
+  writeFileSync(design, "%%MatrixMarket matrix coordinate real general\n3 2 4\n1 1 1\n2 1 1e-9\n1 2 1\n3 2 1e-9\n");
+  for (const [route, says] of [
+    ["automatic", /orthogonal route: JᵀWJ is not safely positive definite/],
+    ["orthogonal", /orthogonal route: the orthogonal route was asked for/],
+  ] as const) {
+    const { stdout, stderr, status } = run("inverse", design, "--json", "--route", route);
+    expect(status).toBe(0);
+    expect(stderr).toMatch(says);
+    for (const variance of JSON.parse(stdout).diagonal) expect(Math.abs(variance / 5e17 - 1)).toBeLessThan(1e-6);
+  }
+  const information = run("inverse", design, "--route", "information");
+  expect(information.status).toBe(2);
+  expect(information.stderr).toMatch(/not safely positive/);
+  const pattern = readMatrixMarket(run("inverse", design, "--pattern").stdout);
+  expect(pattern).toMatchObject({ rows: 2, columns: 2, symmetric: true });
+  expect(Math.abs(pattern.values[1]! / -5e17 - 1)).toBeLessThan(1e-6);
+});
+
 test("a matrix may come from standard input, and general ones are taken when they are symmetric", () => {
   const general = "%%MatrixMarket matrix array real general\n2 2\n2\n1\n1\n2\n";
   const answer = spawnSync(process.execPath, [command, "inverse", "-", "--json"], { encoding: "utf8", input: general });
@@ -101,6 +122,22 @@ const wrong: Record<string, { words: () => string[]; says: RegExp }> = {
   "columns that are no numbers": { words: () => ["inverse", file, "--columns", "3,x"], says: /whole numbers from 1, such as 3,7/ },
   "a column past the last": { words: () => ["inverse", file, "--columns", "6"], says: /--columns names 6; the matrix has columns 1 to 5/ },
   "an unknown ordering": { words: () => ["inverse", file, "--ordering", "random"], says: /Allowed choices are automatic/ },
+  "a route for a square matrix": {
+    words: () => ["inverse", file, "--route", "orthogonal"],
+    says: /--route is for rectangular matrices; this one is 5 × 5/,
+  },
+  "a route that does not exist": {
+    words: () => ["inverse", file, "--route", "qr"],
+    says: /Allowed choices are automatic, information, orthogonal/,
+  },
+  "a design matrix with an empty row": {
+    words: () => {
+      const design = join(folder, "empty-row.mtx");
+      writeFileSync(design, "%%MatrixMarket matrix coordinate real general\n3 2 2\n1 1 1\n3 2 1\n");
+      return ["inverse", design];
+    },
+    says: /Row 1 has no entry.*Counting from 1, as the file does, that is row 2/,
+  },
   "a file that is not there": { words: () => ["inverse", join(folder, "none.mtx")], says: /cannot open .*none\.mtx \(ENOENT\)/ },
   "a folder": { words: () => ["inverse", folder], says: /cannot read .*\(EISDIR\)/ },
   "a malformed file": {

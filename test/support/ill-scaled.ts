@@ -60,7 +60,7 @@ export function exactBlocks(
 /**
  * Feeds network `seed` and compares after each commit.
  * Standard deviations are 10 to a uniform power from −3 to 3, so that weights lie 12 orders of magnitude apart; in every fourth network
- * they stay within one order, in every other fourth each row is one of two kinds.
+ * they stay within one order, in every other fourth each row is one of two kinds. Some noise is given as a matrix, some states are forgotten.
  */
 export function compareNetwork(seed: number, track: "all" | "none", commits: number, take: (comparison: Comparison) => void): void {
   const r = random(seed);
@@ -70,11 +70,22 @@ export function compareNetwork(seed: number, track: "all" | "none", commits: num
   if (track === "all" && r.uniform() < 0.5) estimate.track("all", { column: "newest" });
   let states: [id: StateId, dimension: number][] = [];
   let inForce = new Map<MeasurementId, MeasurementInput>();
+  /** What forgotten states leave behind: it still counts for the others. */
+  const gone: [StateId, number][] = [];
+  const absorbed: MeasurementInput[] = [];
+  /** Mostly independent rows; else a matrix whose correlation comes near to one: R = diag(s) (I (1 − ρ) + 1 1ᵀ ρ) diag(s). */
+  const noise = (rows: number) => {
+    const deviations = Array.from({ length: rows }, () => 10 ** power());
+    if (r.uniform() < 0.8) return { standardDeviations: deviations };
+    const correlation = 1 - 10 ** (-8 * r.uniform() - 0.1);
+    const matrix = deviations.map((a, i) => deviations.map((b, j) => (i === j ? a * a : correlation * (a * b))));
+    return r.uniform() < 0.5 ? { covariance: matrix } : { information: matrix };
+  };
   const measure = (of: readonly (readonly [StateId, number])[], rows: number): MeasurementInput => ({
     states: of.map(([id]) => id),
     jacobians: of.map(([, d]) => Float64Array.from({ length: rows * d }, () => r.normal())),
     residual: Array.from({ length: rows }, () => r.normal()),
-    standardDeviations: Array.from({ length: rows }, () => 10 ** power()),
+    ...noise(rows),
   });
   for (let commit = 0; commit < commits; commit += 1) {
     const nextStates = [...states];
@@ -109,6 +120,8 @@ export function compareNetwork(seed: number, track: "all" | "none", commits: num
         }
       }
     }
+    const leaving = nextStates.length > 6 && r.uniform() < 0.3 ? pick(states)[0] : undefined;
+    if (leaving !== undefined) estimate.forget([leaving]);
     let reported: number;
     try {
       reported = estimate.commit().bound;
@@ -119,11 +132,20 @@ export function compareNetwork(seed: number, track: "all" | "none", commits: num
     }
     states = nextStates;
     inForce = next;
+    if (leaving !== undefined) {
+      states = states.filter(([id]) => id !== leaving);
+      for (const [id, m] of inForce)
+        if (m.states.includes(leaving)) {
+          absorbed.push(m);
+          inForce.delete(id);
+        }
+      gone.push(nextStates.find(([id]) => id === leaving)!);
+    }
     const reads = r.uniform();
     if (reads < 0.3) continue; // so that several commits are read at once
     let truth: Float64Array[];
     try {
-      truth = exactBlocks(states, inForce.values());
+      truth = exactBlocks([...states, ...gone], [...inForce.values(), ...absorbed]).slice(0, states.length);
     } catch {
       continue; // not definite even in double-double
     }

@@ -206,15 +206,20 @@ export function randomNetwork(random: () => number, states: number, dimension: n
       for (const [a, i] of unknowns.entries()) for (const [b, j] of unknowns.entries()) add(i, j, jacobian[a]! * jacobian[b]!);
     }
   }
-  const keys = [...dense.keys()].sort((a, b) => a - b);
-  const columnPointers = new Int32Array(n + 1);
-  for (const key of keys) columnPointers[Math.floor(key / n) + 1]! += 1;
-  for (let j = 0; j < n; j += 1) columnPointers[j + 1]! += columnPointers[j]!;
+  return lowerFrom(n, dense);
+}
+
+/** Columns from entries by column × order + row. */
+export function lowerFrom(order: number, entries: ReadonlyMap<number, number>): LowerColumns {
+  const keys = [...entries.keys()].sort((a, b) => a - b);
+  const columnPointers = new Int32Array(order + 1);
+  for (const key of keys) columnPointers[Math.floor(key / order) + 1]! += 1;
+  for (let j = 0; j < order; j += 1) columnPointers[j + 1]! += columnPointers[j]!;
   return {
-    order: n,
+    order,
     columnPointers,
-    rowIndices: Int32Array.from(keys, (key) => key % n),
-    values: Float64Array.from(keys, (key) => dense.get(key)!),
+    rowIndices: Int32Array.from(keys, (key) => key % order),
+    values: Float64Array.from(keys, (key) => entries.get(key)!),
   };
 }
 
