@@ -57,7 +57,9 @@ export class Orthogonal {
   finished: i32;
   /** The diagonal entry that stopped it. */
   pivot: f64;
+  /** frontFlops of the finished fronts, and of the columns of the one at hand. */
   done: f64;
+  underway: f64;
 }
 
 /** Bytes that orthogonalBegin takes: the largest front, what waits for it, a few numbers a row and unknown. */
@@ -134,12 +136,14 @@ export function orthogonalAdvance(job: Orthogonal, budget: f64): i32 {
       job.finished = triangularize(columns, job.front, ld, job.ends, job.from, to, job.finished, job.leads, job.scratch);
       spent += frontFlops(job.rows, columns) * <f64>(to - job.from) / <f64>columns / FLOPS_PER_UNIT;
       job.from = to;
+      job.underway = frontFlops(job.rows, columns) * <f64>to / <f64>columns;
       if (to == columns) job.phase = STORE;
     } else {
       const failed = storePanel(job, t, columns, ld);
       if (failed) return failed;
       leaveRows(job, t, columns, ld);
-      job.done += frontFlops(job.rows, columns);
+      job.done += job.underway;
+      job.underway = 0;
       job.phase = GATHER;
       ++job.at;
     }
@@ -148,7 +152,7 @@ export function orthogonalAdvance(job: Orthogonal, budget: f64): i32 {
 }
 
 /** Work done ÷ work predicted, 0 to 1. */
-export function orthogonalProgress(job: Orthogonal): f64 { return job.plan.flops > 0 ? min(1.0, job.done / job.plan.flops) : 1; }
+export function orthogonalProgress(job: Orthogonal): f64 { return job.plan.flops > 0 ? min(1.0, (job.done + job.underway) / job.plan.flops) : 1; }
 /** The diagonal entry of R that stopped the elimination. */
 export function orthogonalPivot(job: Orthogonal): f64 { return job.pivot; }
 
