@@ -30,11 +30,13 @@ import { bytes } from "./mode";
  *  by the reciprocal, and most exchanges are saved. */
 const SMALL = 0.125;
 
-/** T, row-major 4 × 4; the strip's own columns of R, a row of four each; xᵀ times the strip, for the column x at hand. */
+/** T, row-major 4 × 4; the strip's own columns of R, a row of four each; xᵀ times the strip, for the column x at hand, and the row that
+ *  holds its largest entry; what the reflection before takes away from a row for each unit of its entry there. */
 const t = memory.data(128, 16);
 const corner = memory.data(128, 16);
 const sums = memory.data(32, 16);
 const best = memory.data(4, 4);
+const weights = memory.data(32, 16);
 
 /** Bytes of scratch: four vectors. */
 export function householderScratch(rows: i32): usize { return <usize>rows << 5; }
@@ -55,6 +57,14 @@ export function householderScratch(rows: i32): usize { return <usize>rows << 5; 
   if (q == 1) return v128.shuffle<f64>(low, low, 1, 1);
   if (q == 2) return v128.shuffle<f64>(high, high, 0, 0);
   return v128.shuffle<f64>(high, high, 1, 1);
+}
+
+// @ts-ignore: decorator
+@inline function entryOf(q: i32, low: v128, high: v128): f64 {
+  if (q == 0) return f64x2.extract_lane(low, 0);
+  if (q == 1) return f64x2.extract_lane(low, 1);
+  if (q == 2) return f64x2.extract_lane(high, 0);
+  return f64x2.extract_lane(high, 1);
 }
 
 /** One row of the strip in passColumn: gathered from `from` for q = 0, else relieved of (entry q − 1) × w; then kept at p. */
@@ -103,70 +113,86 @@ export function householderScratch(rows: i32): usize { return <usize>rows << 5; 
   return f64x2.extract_lane(largest, 0);
 }
 
-/** Triangularizes four columns (or the last few, the rest zeros) gathered in v, `len` rows of four; v becomes V, T and the corner are set.
- *  ends i32[cols], base: rows of a finished before; rows are exchanged in `a` too (its first unfinished row), from the byte `after` of a
- *  row on. leads[i] becomes the column, the strip's first being `column`, of its row i. Returns the rows finished.
- *  A finished row's later entries in v are zeros, so each column of V begins at its own pivot. */
-function reduceStrip(
-  cols: i32, len: i32, ends: usize, base: i32, v: usize, from: usize, strideFrom: usize, a: usize, row: usize, after: usize, leads: usize, column: i32,
+/** Column q of a strip whose `r` first rows are finished: the reflection before is carried out on it, its own one found, its row of R kept.
+ *  Returns the rows finished now. Parameters as in reduceStrip. */
+// @ts-ignore: decorator
+@inline function reduceColumn(
+  q: i32, r: i32, ends: usize, base: i32, v: usize, end: usize, from: usize, strideFrom: usize, a: usize, row: usize, after: usize, leads: usize, column: i32,
 ): i32 {
-  const zero = f64x2.splat(0), end = v + (<usize>len << 5);
-  let r = 0, w0 = zero, w1 = zero;
-  for (let k: usize = 0; k < 128; k += 16) v128.store(t + k, zero);
-  for (let q = 0; q < cols; ++q) {
-    const pivot = v + (<usize>r << 5);
-    let largest: f64;
-    if (q == 0) largest = passColumn(0, pivot, end, from, strideFrom, w0, w1);
-    else if (q == 1) largest = passColumn(1, pivot, end, 0, 0, w0, w1);
-    else if (q == 2) largest = passColumn(2, pivot, end, 0, 0, w0, w1);
-    else largest = passColumn(3, pivot, end, 0, 0, w0, w1);
-    w0 = zero;
-    w1 = zero;
-    if (largest == 0) continue;
-    if (Math.abs(f64At(pivot, q)) < SMALL * largest) {
-      const other = load<u32>(best), into = a + (other - v >> 5) * row, own = a + <usize>r * row;
-      swapPairs(pivot, other, pivot + 32);
-      swapPairs(own + after, into + after, own + row);
+  const pivot = v + (<usize>r << 5), largest = passColumn(q, pivot, end, from, strideFrom, v128.load(weights), v128.load(weights, 16));
+  if (q < 3) { v128.store(weights, f64x2.splat(0)); v128.store(weights, f64x2.splat(0), 16); }
+  if (largest == 0) return r;
+  if (Math.abs(f64At(pivot, q)) < SMALL * largest) {
+    const other = load<u32>(best), into = a + (other - v >> 5) * row, own = a + <usize>r * row;
+    swapPairs(pivot, other, pivot + 32);
+    swapPairs(own + after, into + after, own + row);
+  }
+  const kept = corner + (<usize>r << 5), p0 = v128.load(pivot), p1 = v128.load(pivot, 16);
+  let v0 = 0.0;
+  if (i32At(ends, q) - base - r > 1) {
+    // v = x with σ‖x‖ added to its first entry, so vᵀ times the strip is the sums plus that times the pivot's row.
+    const s0 = v128.load(sums), s1 = v128.load(sums, 16), x0 = entryOf(q, p0, p1), norm = Math.sqrt(entryOf(q, s0, s1));
+    const added = copysign<f64>(norm, x0), tau = 1 / (norm * (norm + Math.abs(x0)));
+    const lift = f64x2.splat(added), z0 = madd(lift, p0, s0), z1 = madd(lift, p1, s1), by = f64x2.splat(tau);
+    v0 = x0 + added;
+    const first = f64x2.splat(v0);
+    // The columns up to q stay.
+    if (q == 0) {
+      const w0 = f64x2.replace_lane(f64x2.mul(by, z0), 0, 0), w1 = f64x2.mul(by, z1);
+      v128.store(weights, w0);
+      v128.store(weights, w1, 16);
+      v128.store(kept, f64x2.replace_lane(nmadd(first, w0, p0), 0, -added));
+      v128.store(kept, nmadd(first, w1, p1), 16);
+    } else if (q == 1) {
+      const w1 = f64x2.mul(by, z1);
+      v128.store(weights, w1, 16);
+      setF64(kept, 1, -added);
+      v128.store(kept, nmadd(first, w1, p1), 16);
+    } else if (q == 2) {
+      const w1 = f64x2.replace_lane(f64x2.mul(by, z1), 0, 0);
+      v128.store(weights, w1, 16);
+      v128.store(kept, f64x2.replace_lane(nmadd(first, w1, p1), 0, -added), 16);
+    } else setF64(kept, 3, -added);
+    // Column q of T: τ on the diagonal, above it −τ T Vᵀv, and z holds v's products with the vectors before it.
+    setF64(t, 5 * q, tau);
+    if (q > 0) {
+      const g0 = entryOf(0, z0, z1), g1 = entryOf(1, z0, z1), g2 = entryOf(2, z0, z1);
+      let c0 = f64At(t, 0) * g0;
+      if (q > 1) c0 += f64At(t, 1) * g1;
+      if (q > 2) c0 += f64At(t, 2) * g2;
+      setF64(t, q, -tau * c0);
+      if (q > 1) {
+        let c1 = f64At(t, 5) * g1;
+        if (q > 2) c1 += f64At(t, 6) * g2;
+        setF64(t, 4 + q, -tau * c1);
+      }
+      if (q > 2) setF64(t, 11, -tau * f64At(t, 10) * g2);
     }
-    const kept = corner + (<usize>r << 5), p0 = v128.load(pivot), p1 = v128.load(pivot, 16);
+  } else {
     v128.store(kept, p0);
     v128.store(kept, p1, 16);
-    let v0 = 0.0;
-    if (i32At(ends, q) - base - r > 1) {
-      // v = x with σ‖x‖ added to its first entry, so vᵀ times the strip is the sums plus that times the pivot's row.
-      const x0 = f64At(pivot, q), norm = Math.sqrt(f64At(sums, q)), added = x0 > 0 ? norm : -norm, tau = 1 / (norm * (norm + Math.abs(x0)));
-      const lift = f64x2.splat(added), z0 = madd(lift, p0, v128.load(sums)), z1 = madd(lift, p1, v128.load(sums, 16)), by = f64x2.splat(tau);
-      v128.store(sums, z0);
-      v128.store(sums, z1, 16);
-      joinReflection(q, tau);
-      v0 = x0 + added;
-      w0 = f64x2.mul(by, z0);
-      w1 = f64x2.mul(by, z1);
-      // The columns up to q stay.
-      w0 = q == 0 ? f64x2.replace_lane(w0, 0, 0) : zero;
-      if (q == 2) w1 = f64x2.replace_lane(w1, 0, 0); else if (q == 3) w1 = zero;
-      const first = f64x2.splat(v0);
-      v128.store(kept, nmadd(first, w0, p0));
-      v128.store(kept, nmadd(first, w1, p1), 16);
-      setF64(kept, q, -added);
-    }
-    setF64(pivot, q, v0);
-    for (let k = q + 1; k < 4; ++k) setF64(pivot, k, 0);
-    setI32(leads, r, column + q);
-    ++r;
   }
-  return r;
+  setF64(pivot, q, v0);
+  if (q < 1) setF64(pivot, 1, 0);
+  if (q < 2) v128.store(pivot, f64x2.splat(0), 16);
+  else if (q < 3) setF64(pivot, 3, 0);
+  setI32(leads, r, column + q);
+  return r + 1;
 }
 
-/** Column q of T: tau on the diagonal, above it −tau·T·(Vᵀ v), whose products with the columns before are in `sums`. */
-// @ts-ignore: decorator
-@inline function joinReflection(q: i32, tau: f64): void {
-  for (let i = 0; i < q; ++i) {
-    let s = 0.0;
-    for (let k = i; k < q; ++k) s += f64At(t, 4 * i + k) * f64At(sums, k);
-    setF64(t, 4 * i + q, -tau * s);
-  }
-  setF64(t, 5 * q, tau);
+/** Triangularizes four columns (or the last few, the rest zeros), gathered into v, rows of four up to `end`, from rows `strideFrom` bytes apart;
+ *  v becomes V, T and the corner are set. ends i32[cols], base: rows of a finished before; rows are exchanged in `a` too (its first
+ *  unfinished row), from the byte `after` of a row on. leads[i] becomes the column, the strip's first being `column`, of its row i.
+ *  Returns the rows finished. A finished row's later entries in v are zeros, so each column of V begins at its own pivot. */
+function reduceStrip(
+  cols: i32, ends: usize, base: i32, v: usize, end: usize, from: usize, strideFrom: usize, a: usize, row: usize, after: usize, leads: usize, column: i32,
+): i32 {
+  for (let k: usize = 0; k < 128; k += 16) v128.store(t + k, f64x2.splat(0));
+  let r = reduceColumn(0, 0, ends, base, v, end, from, strideFrom, a, row, after, leads, column);
+  if (cols > 1) r = reduceColumn(1, r, ends, base, v, end, 0, 0, a, row, after, leads, column);
+  if (cols > 2) r = reduceColumn(2, r, ends, base, v, end, 0, 0, a, row, after, leads, column);
+  if (cols > 3) r = reduceColumn(3, r, ends, base, v, end, 0, 0, a, row, after, leads, column);
+  return r;
 }
 
 /** w := w + low·v and u := u + high·v for entry q of V's row at p; with PAIR there is no high. */
@@ -306,7 +332,7 @@ export function triangularize(
     }
     // Whole pairs of columns are exchanged and reflected: what lies in the strip itself is written afterwards.
     const after = j + cols & ~1;
-    const rows = reduceStrip(cols, len, ends + (<usize>j << 2), done, v, from, strideFrom, top, row, bytes(after), leads + (<usize>done << 2), j);
+    const rows = reduceStrip(cols, ends + (<usize>j << 2), done, v, end, from, strideFrom, top, row, bytes(after), leads + (<usize>done << 2), j);
     if (f64At(t, 0) != 0 || f64At(t, 5) != 0 || f64At(t, 10) != 0 || f64At(t, 15) != 0)
       reflectRows(rows == 4, v, end, top + bytes(after), row, ld - after);
     for (let i = 0; i < rows; ++i) {

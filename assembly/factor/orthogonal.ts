@@ -10,7 +10,7 @@ import { addF64, addI32, atF64, f64At, i32At, setF64, setI32, setU32, u32At } fr
 import { OK, OUT_OF_MEMORY, RUNNING } from "../memory/status";
 import { householderScratch, triangularize } from "../dense/householder";
 import { backwardSolve } from "../solve/triangular";
-import { frontFlops, frontLead, RowPlan } from "../symbolic/row-plan";
+import { frontFlops, frontLead, RowPlan, rowsAtOnce } from "../symbolic/row-plan";
 import { Symbolic } from "../symbolic/symbolic";
 import { Factor } from "./cholesky";
 
@@ -49,15 +49,19 @@ export class Orthogonal {
   ends: usize;
   leads: usize;
   scratch: usize;
-  /** Supernode at hand, what is next for it, from which column, rows in the front, rows finished. */
+  /** Supernode at hand, what is next for it, which of its arriving rows comes next (−1: none has come), from which column the front is to
+   *  be reduced, rows in the front, rows finished. */
   at: i32;
   phase: i32;
+  arrival: i32;
   from: i32;
   rows: i32;
   finished: i32;
   /** The diagonal entry that stopped it. */
   pivot: f64;
+  /** frontFlops of the finished fronts, and of the columns of the one at hand. */
   done: f64;
+  underway: f64;
 }
 
 /** Bytes that orthogonalBegin takes: the largest front, what waits for it, a few numbers a row and unknown. */
@@ -82,6 +86,7 @@ export function orthogonalBegin(factor: Factor, plan: RowPlan, values: usize, ri
   job.right = right;
   job.carried = right ? 1 : 0;
   job.squares = squares;
+  job.arrival = -1;
   job.turned = allocateArray(n, 3);
   job.front = allocateArray(plan.frontBytes, 0);
   job.stack = allocateArray(plan.stackBytes, 0);
@@ -134,13 +139,25 @@ export function orthogonalAdvance(job: Orthogonal, budget: f64): i32 {
       job.finished = triangularize(columns, job.front, ld, job.ends, job.from, to, job.finished, job.leads, job.scratch);
       spent += frontFlops(job.rows, columns) * <f64>(to - job.from) / <f64>columns / FLOPS_PER_UNIT;
       job.from = to;
-      if (to == columns) job.phase = STORE;
+      job.underway = frontFlops(job.rows, columns) * <f64>to / <f64>columns;
+      if (to == columns) {
+        job.done += job.underway;
+        job.underway = 0;
+        job.phase = STORE;
+      }
+    } else if (job.arrival < i32At(job.plan.arrivalStart, i32At(s.first, t + 1))) {
+      stackRows(job, stackBase(job, t), 0, 0, columns, ld); // more rows arrive on what these have left
+      job.phase = GATHER;
     } else {
       const failed = storePanel(job, t, columns, ld);
       if (failed) return failed;
-      leaveRows(job, t, columns, ld);
-      job.done += frontFlops(job.rows, columns);
+      const width = i32At(s.first, t + 1) - i32At(s.first, t), base = stackBase(job, t);
+      setU32(job.stackAt, t, <u32>base);
+      setI32(job.left, t, job.finished - width);
+      assert(job.finished - width <= i32At(job.plan.leaves, t), "more rows left than planned");
+      job.top = stackRows(job, base, width, width, columns, ld);
       job.phase = GATHER;
+      job.arrival = -1;
       ++job.at;
     }
   }
@@ -148,41 +165,61 @@ export function orthogonalAdvance(job: Orthogonal, budget: f64): i32 {
 }
 
 /** Work done ÷ work predicted, 0 to 1. */
-export function orthogonalProgress(job: Orthogonal): f64 { return job.plan.flops > 0 ? min(1.0, job.done / job.plan.flops) : 1; }
+export function orthogonalProgress(job: Orthogonal): f64 { return job.plan.flops > 0 ? min(1.0, (job.done + job.underway) / job.plan.flops) : 1; }
 /** The diagonal entry of R that stopped the elimination. */
 export function orthogonalPivot(job: Orthogonal): f64 { return job.pivot; }
 
-/** The front of supernode t, rows sorted by where they begin: counted first, then put in their places. */
+/** The front of supernode t, rows sorted by where they begin: counted first, then put in their places. The first time it holds what the
+ *  children left and rows that arrive, later what those before have left and more of them. */
 function gatherFront(job: Orthogonal, t: i32, columns: i32, ld: i32): void {
   const plan = job.plan, s = plan.symbolic, first = i32At(s.first, t), width = i32At(s.first, t + 1) - first;
-  const ends = job.ends, row = <usize>ld << 3;
-  const start = plan.arrivalStart, child = i32At(s.childStart, t), childEnd = i32At(s.childStart, t + 1);
+  const ends = job.ends, row = <usize>ld << 3, start = plan.arrivalStart, isFirst = job.arrival < 0;
+  const from = isFirst ? i32At(start, first) : job.arrival, to = min(from + rowsAtOnce(columns), i32At(start, first + width));
   setI32(ends, 0, 0);
-  for (let k = 0; k < columns; ++k) setI32(ends, k + 1, k < width ? i32At(start, first + k + 1) - i32At(start, first + k) : 0);
-  for (let e = child; e < childEnd; ++e) childRows(job, i32At(s.children, e), 0, 0);
+  for (let k = 0; k < columns; ++k)
+    setI32(ends, k + 1, k < width ? max(0, min(to, i32At(start, first + k + 1)) - max(from, i32At(start, first + k))) : 0);
+  takeStacked(job, t, isFirst, columns, 0);
   for (let k = 0; k < columns; ++k) addI32(ends, k + 1, i32At(ends, k));
   job.rows = i32At(ends, columns);
   memory.fill(job.front, 0, <usize>job.rows * row);
   // ends[k] is where the next row that begins at column k goes, and in the end how many begin up to there.
-  for (let k = 0; k < width; ++k) {
-    for (let q = i32At(start, first + k), last = i32At(start, first + k + 1); q < last; ++q) {
+  takeStacked(job, t, isFirst, columns, row);
+  for (let k = 0, q = from; q < to; ++k) {
+    for (const last = min(to, i32At(start, first + k + 1)); q < last; ++q) {
       const r = i32At(plan.arrivals, q), place = i32At(ends, k), into = job.front + <usize>place * row;
       setI32(ends, k, place + 1);
       for (let p = i32At(plan.rowStart, r), end = i32At(plan.rowStart, r + 1); p < end; ++p) addF64(into, i32At(plan.column, p), f64At(job.values, p));
       if (job.carried) setF64(into, columns, f64At(job.right, r) * job.rightScale);
     }
   }
-  for (let e = child; e < childEnd; ++e) childRows(job, i32At(s.children, e), columns, row);
+  job.arrival = to;
 }
 
-/** Walks the rows that child c left, which begin at ascending columns: with row = 0 counts them where they begin in the parent, one place
- *  late; else copies them into the front of `columns` columns. */
-function childRows(job: Orthogonal, c: i32, columns: i32, row: usize): void {
-  const s = job.factor.symbolic, below = i32At(s.rowStart, c + 1) - i32At(s.rowStart, c), carried = job.carried;
-  const lastRun = s.runs + (<usize>i32At(s.runEnd, c) << 3);
-  let run = s.runs + (<usize>i32At(s.runStart, c) << 3), before = 0; // columns of the child before this run
-  let from = job.stack + u32At(job.stackAt, c);
-  for (let k = i32At(job.left, c); k > 0; --k) {
+/** One run of all the columns, for rows that go back into the front they came from. */
+const whole = memory.data(8, 4);
+
+/** The rows that wait on the stack for supernode t's front: what its children left, or what it had before. */
+function takeStacked(job: Orthogonal, t: i32, isFirst: bool, columns: i32, row: usize): void {
+  const s = job.factor.symbolic;
+  if (!isFirst) {
+    store<i32>(whole, 0);
+    store<i32>(whole, columns, 4);
+    takeRows(job, whole, whole + 8, columns, job.stack + stackBase(job, t), job.finished, columns, row);
+    return;
+  }
+  for (let e = i32At(s.childStart, t), end = i32At(s.childStart, t + 1); e < end; ++e) {
+    const c = i32At(s.children, e), runs = s.runs + (<usize>i32At(s.runStart, c) << 3), lastRun = s.runs + (<usize>i32At(s.runEnd, c) << 3);
+    const own = i32At(s.rowStart, c + 1) - i32At(s.rowStart, c);
+    takeRows(job, runs, lastRun, own, job.stack + u32At(job.stackAt, c), i32At(job.left, c), columns, row);
+  }
+}
+
+/** Walks `count` stacked rows of `own` columns, which begin at ascending ones; runs say where those stand in the front. With row = 0 counts
+ *  the rows where they begin in the front, one place late; else copies them into the front of `columns` columns. */
+function takeRows(job: Orthogonal, run: usize, lastRun: usize, own: i32, from: usize, count: i32, columns: i32, row: usize): void {
+  const carried = job.carried;
+  let before = 0; // columns of the rows before this run
+  for (; count > 0; --count) {
     const begins = load<i32>(from);
     while (begins >= before + load<i32>(run, 4)) { before += load<i32>(run, 4); run += 8; }
     const position = load<i32>(run) + begins - before;
@@ -190,17 +227,17 @@ function childRows(job: Orthogonal, c: i32, columns: i32, row: usize): void {
     if (row) {
       const place = i32At(job.ends, position), into = job.front + <usize>place * row;
       setI32(job.ends, position, place + 1);
-      let count = before + load<i32>(run, 4) - begins;
-      copyRun(from, atF64(into, position), count);
-      let entry = from + (<usize>count << 3);
+      let length = before + load<i32>(run, 4) - begins;
+      copyRun(from, atF64(into, position), length);
+      let entry = from + (<usize>length << 3);
       for (let next = run + 8; next < lastRun; next += 8) {
-        count = load<i32>(next, 4);
-        copyRun(entry, atF64(into, load<i32>(next)), count);
-        entry += <usize>count << 3;
+        length = load<i32>(next, 4);
+        copyRun(entry, atF64(into, load<i32>(next)), length);
+        entry += <usize>length << 3;
       }
       if (carried) setF64(into, columns, load<f64>(entry));
     } else addI32(job.ends, position + 1, 1);
-    from += <usize>(below - begins + carried) << 3;
+    from += <usize>(own - begins + carried) << 3;
   }
 }
 
@@ -236,22 +273,24 @@ function storePanel(job: Orthogonal, t: i32, columns: i32, ld: i32): i32 {
   return 0;
 }
 
-/** What is left of the front on the stack, in place of what the children had there: each row where it begins, then its entries. */
-function leaveRows(job: Orthogonal, t: i32, columns: i32, ld: i32): void {
-  const s = job.factor.symbolic, width = i32At(s.first, t + 1) - i32At(s.first, t), child = i32At(s.childStart, t);
-  if (child < i32At(s.childStart, t + 1)) job.top = u32At(job.stackAt, i32At(s.children, child));
-  setU32(job.stackAt, t, <u32>job.top);
-  setI32(job.left, t, job.finished - width);
-  assert(job.finished - width <= i32At(job.plan.leaves, t), "more rows left than planned");
-  let into = job.stack + job.top;
-  for (let i = width; i < job.finished; ++i) {
+/** Where supernode t's rows go on the stack: in place of what its children had there. */
+function stackBase(job: Orthogonal, t: i32): usize {
+  const s = job.factor.symbolic, child = i32At(s.childStart, t);
+  return child < i32At(s.childStart, t + 1) ? u32At(job.stackAt, i32At(s.children, child)) : job.top;
+}
+
+/** Puts the front's finished rows from `row` on at byte `at` of the stack: each the column where it begins, counted from `origin`, then its
+ *  entries. Returns where they end. */
+function stackRows(job: Orthogonal, at: usize, row: i32, origin: i32, columns: i32, ld: i32): usize {
+  let into = job.stack + at;
+  for (let i = row; i < job.finished; ++i) {
     const begins = i32At(job.leads, i), count = columns + job.carried - begins;
-    store<i32>(into, begins - width);
+    store<i32>(into, begins - origin);
     copyRun(job.front + (<usize>(i * ld + begins) << 3), into + 8, count);
     into += <usize>(count + 1) << 3;
   }
-  job.top = into - job.stack;
-  assert(<f64>job.top <= job.plan.stackBytes, "the stack is as planned");
+  assert(<f64>(into - job.stack) <= job.plan.stackBytes, "the stack is as planned");
+  return into - job.stack;
 }
 
 /** The least-squares solution of J x ≈ b into out f64[n], caller's numbering, of a complete elimination with a right-hand side.

@@ -29,6 +29,12 @@ export class RowPlan {
   flops: f64;
 }
 
+/** Rows that arrive at a front of so many columns are eliminated so many at a time, each lot on top of the triangle that those before have left:
+ *  a front then stays small however often the same things are measured (Demmel, Grigori, Hoemmen, Langou 2012, "Communication-optimal
+ *  parallel and sequential QR and LU factorizations", SIAM J. Sci. Comput. 34). */
+// @ts-ignore: decorator
+@inline export function rowsAtOnce(columns: i32): i32 { return max(256, 2 * columns); }
+
 /** Bytes of `count` rows that a front leaves, the k-th beginning at column k or later of `below`: their entries, what they carry, and
  *  where they begin. */
 export function stackedBytes(count: i32, below: i32, carried: i32): f64 {
@@ -114,20 +120,27 @@ function layFronts(plan: RowPlan): void {
   const s = plan.symbolic;
   let held: f64 = 0;
   for (let t = 0; t < s.supernodes; ++t) {
-    const width = i32At(s.first, t + 1) - i32At(s.first, t), below = i32At(s.rowStart, t + 1) - i32At(s.rowStart, t);
-    let rows = i32At(plan.arrivalStart, i32At(s.first, t + 1)) - i32At(plan.arrivalStart, i32At(s.first, t));
-    for (let e = i32At(s.childStart, t), end = i32At(s.childStart, t + 1); e < end; ++e) {
+    const first = i32At(s.first, t), end = i32At(s.first, t + 1), width = end - first;
+    const below = i32At(s.rowStart, t + 1) - i32At(s.rowStart, t), columns = width + below, most = rowsAtOnce(columns);
+    let waiting = i32At(plan.arrivalStart, end) - i32At(plan.arrivalStart, first), rows = min(waiting, most);
+    for (let e = i32At(s.childStart, t), last = i32At(s.childStart, t + 1); e < last; ++e) {
       const c = i32At(s.children, e), left = i32At(plan.leaves, c);
       rows += left;
       held -= stackedBytes(left, i32At(s.rowStart, c + 1) - i32At(s.rowStart, c), 1);
     }
-    const left = max(0, min(rows - width, below)), front = 8 * <f64>rows * <f64>frontLead(width + below, 1);
+    for (waiting -= min(waiting, most); ; waiting -= min(waiting, most)) {
+      plan.flops += frontFlops(rows, columns);
+      plan.mostRows = max(plan.mostRows, rows);
+      plan.frontBytes = Math.max(plan.frontBytes, 8 * <f64>rows * <f64>frontLead(columns, 1));
+      if (waiting == 0) break;
+      const triangle = min(rows, columns);
+      plan.stackBytes = Math.max(plan.stackBytes, held + stackedBytes(triangle, columns, 1));
+      rows = triangle + min(waiting, most);
+    }
+    const left = max(0, min(rows - width, below));
     setI32(plan.leaves, t, left);
     held += stackedBytes(left, below, 1);
-    if (held > plan.stackBytes) plan.stackBytes = held;
-    if (front > plan.frontBytes) plan.frontBytes = front;
-    if (rows > plan.mostRows) plan.mostRows = rows;
-    plan.flops += frontFlops(rows, width + below);
+    plan.stackBytes = Math.max(plan.stackBytes, held);
   }
 }
 

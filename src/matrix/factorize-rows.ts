@@ -66,7 +66,7 @@ const optionNames = [...factorizeOptionNames, "weights", "route"];
  *   the condition of √W J with columns of norm 1 is about 3e14 or more.
  * @throws {NotPositiveDefiniteError} the same by the route `"information"`.
  * @throws {MemoryLimitError} before the numbers are started.
- * Cost: the factorization; the orthogonal route takes 3 to 5 times as long as Cholesky, and `"automatic"` tries Cholesky first.
+ * Cost: the factorization; the orthogonal route takes 2.5 to 5 times as long as Cholesky, and `"automatic"` tries Cholesky first.
  * Sources: assembly/factor/orthogonal.ts names them; the choice: van der Sluis (1969), Numer. Math. 14.
  */
 export function factorizeRows(jacobian: SparseColumns, options: FactorizeRowsOptions = {}): CholeskyFactor {

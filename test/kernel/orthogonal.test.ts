@@ -49,9 +49,16 @@ function squaresOf(columns: readonly (readonly number[])[], values: readonly (re
 }
 
 /** Plans, runs in slices of `budget` with progress that never falls, and gives the status and the solution. */
-function eliminate(pipeline: Pipeline, { n, columns, values, right }: RandomRows, budget: number, withRight = true) {
+function eliminate(
+  pipeline: Pipeline,
+  { n, columns, values, right }: RandomRows,
+  budget: number,
+  withRight = true,
+  mostBytes = Number.POSITIVE_INFINITY,
+) {
   const { raw } = kernel;
-  const rowStart = Int32Array.from({ length: columns.length + 1 }, (_, r) => columns.slice(0, r).reduce((sum, row) => sum + row.length, 0));
+  const rowStart = new Int32Array(columns.length + 1);
+  for (const [r, row] of columns.entries()) rowStart[r + 1] = rowStart[r]! + row.length;
   const blocks = [
     intoKernel(kernel, rowStart),
     intoKernel(kernel, Int32Array.from(columns.flat())),
@@ -65,6 +72,7 @@ function eliminate(pipeline: Pipeline, { n, columns, values, right }: RandomRows
   const job = raw.orthogonalBegin!(pipeline.factor, plan, blocks[2], withRight ? blocks[3] : 0, blocks[5]);
   // Block headers and roundings come on top: at most 64 bytes for each of the eight blocks.
   expect(raw.memoryUsed!() - before).toBeLessThanOrEqual(raw.orthogonalBytes!(plan) + 512);
+  expect(raw.orthogonalBytes!(plan)).toBeLessThanOrEqual(mostBytes);
   let last = 0;
   let status = -1;
   for (; status === -1; ) {
@@ -147,6 +155,42 @@ test("many rows on few unknowns, and fronts cut into slices inside", () => {
     for (let j = 0; j < n; j += 1) expect(Math.abs(whole.solution[j]! - expected.get(j, 0))).toBeLessThan(1e-11);
     pipeline.release();
   }
+});
+
+test("the same few things measured very often: rows go through in lots, the front stays small, and children's rows come with the first", () => {
+  const once = randomRows(21, 24, 40);
+  const random = randomFrom(22);
+  const again = (row: readonly number[]) => row.map((v) => v + 0.1 * (2 * random() - 1));
+  const times = 60;
+  const rows: RandomRows = {
+    n: once.n,
+    columns: upTo(times).flatMap(() => once.columns),
+    values: upTo(times).flatMap(() => once.values.map(again)),
+    right: upTo(times).flatMap(() => again(once.right)),
+  };
+  const pipeline = new Pipeline(kernel, normalMatrix(rows));
+  const { solution } = eliminate(pipeline, rows, 3000);
+  const dense = Matrix.zeros(rows.columns.length, rows.n);
+  for (const [r, row] of rows.columns.entries()) for (const [k, j] of row.entries()) dense.set(r, j, rows.values[r]![k]!);
+  const expected = new QrDecomposition(dense).solve(Matrix.columnVector(rows.right));
+  for (let j = 0; j < rows.n; j += 1) expect(Math.abs(solution[j]! - expected.get(j, 0))).toBeLessThan(1e-12);
+  pipeline.release();
+
+  // 20 000 rows on three unknowns: no more than 259 of them in the front at once.
+  const tall: RandomRows = {
+    n: 3,
+    columns: upTo(20_000).map(() => [0, 1, 2]),
+    values: upTo(20_000).map(() => upTo(3).map(() => 2 * random() - 1)),
+    right: upTo(20_000).map(() => 1),
+  };
+  const small = new Pipeline(kernel, normalMatrix(tall));
+  eliminate(small, tall, Number.POSITIVE_INFINITY, false, 40_000);
+  // The diagonal of the inverse of about (20 000 ÷ 3) I: its first value by the sums themselves.
+  const { diagonal } = small.selectedInverse();
+  const gram = new Matrix(upTo(3).map((i) => upTo(3).map((j) => tall.values.reduce((sum, row) => sum + row[i]! * row[j]!, 0))));
+  const inverse = new QrDecomposition(gram).solve(Matrix.eye(3));
+  for (const j of upTo(3)) expect(Math.abs(diagonal[j]! / inverse.get(j, j) - 1)).toBeLessThan(1e-11);
+  small.release();
 });
 
 test("an unknown that the rows leave free stops the elimination with its number; good rows then succeed", () => {

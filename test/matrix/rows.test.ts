@@ -390,6 +390,35 @@ test("weights: rows of weight zero are left out and told; the rest count as whit
   other.dispose();
 });
 
+test("entries at the same place add up, zeros and a row of them are taken as they are", () => {
+  // Rows (1 + 2, 0), (0, 0), (1, 1): JᵀJ = [10 1; 1 1].
+  const jacobian = { rows: 3, columns: 2, columnPointers: [0, 4, 7], rowIndices: [0, 2, 0, 1, 2, 1, 0], values: [1, 1, 2, 0, 1, 0, 0] };
+  for (const route of ["orthogonal", "information"] as const) {
+    const { factor, solution } = leastSquares(jacobian, [3, 7, 2], { route });
+    for (const [k, v] of [1, -1, -1, 10].entries()) expect(Math.abs(factor.inverseBlock([0, 1])[k]! - v / 9)).toBeLessThan(1e-15);
+    for (const v of solution) expect(Math.abs(v - 1)).toBeLessThan(1e-14);
+    factor.dispose();
+  }
+});
+
+test("an abort between slices rejects with its reason, and gives all memory back", async () => {
+  const jacobian = byColumns(whitenedRows(families.net.make(3000)));
+  const { used } = memoryUsage();
+  for (const after of [1, 2]) {
+    // analysis, elimination and condition take a slice each at least
+
+    const abort = new AbortController();
+    let slices = 0;
+    const onProgress = () => {
+      slices += 1;
+      if (slices === after) abort.abort(new Error("enough"));
+    };
+    const error = await errorOf(() => factorizeRowsAsync(jacobian, { route: "orthogonal", signal: abort.signal, onProgress }));
+    expect(error).toHaveProperty("message", "enough");
+    expect(memoryUsage().used).toBe(used);
+  }
+});
+
 test("numbers near both ends of f64's range keep their digits; no unknown at all is a factor too", () => {
   for (const size of [1e-130, 1e130]) {
     const factor = factorizeRows(jacobianOf([[3 * size, 0], [4 * size, 2], [0, 1]]), { route: "orthogonal" }); // biome-ignore format: a matrix
