@@ -9,7 +9,7 @@ import { allocate, allocateArray, release } from "../memory/heap";
 import { addF64, addI32, atF64, f64At, i32At, setF64, setI32, setU32, u32At } from "../memory/access";
 import { OK, OUT_OF_MEMORY, RUNNING } from "../memory/status";
 import { householderScratch, triangularize } from "../dense/householder";
-import { backwardSolve } from "../solve/triangular";
+import { backwardSolve, gatherRoom } from "../solve/triangular";
 import { frontFlops, frontLead, RowPlan, rowsAtOnce } from "../symbolic/row-plan";
 import { Symbolic } from "../symbolic/symbolic";
 import { Factor } from "./cholesky";
@@ -296,7 +296,7 @@ function stackRows(job: Orthogonal, at: usize, row: i32, origin: i32, columns: i
 /** The least-squares solution of J x ≈ b into out f64[n], caller's numbering, of a complete elimination with a right-hand side.
  *  OK or OUT_OF_MEMORY. Cost: a backward solve. */
 export function orthogonalSolution(job: Orthogonal, out: usize): i32 {
-  const s = job.factor.symbolic, buffer = allocateArray(<f64>s.deepest, 3);
+  const s = job.factor.symbolic, buffer = allocateArray(gatherRoom(s, 1), 3);
   if (!buffer) return OUT_OF_MEMORY;
   backwardSolve(job.factor, job.turned, 1, 0, 0, s.supernodes, buffer);
   for (let c = 0; c < s.n; ++c) setF64(out, i32At(s.order, c), f64At(job.turned, c) / job.rightScale);

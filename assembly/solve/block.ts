@@ -9,13 +9,13 @@ import { rankUpdateLower } from "../dense/rank-update";
 import { mirror } from "../dense/transpose";
 import { Factor } from "../factor/cholesky";
 import { addPath, clearMarks } from "./reach";
-import { forwardSolve } from "./triangular";
+import { forwardSolve, gatherRoom, stride } from "./triangular";
 
 /** out f64[count × count] = A⁻¹[unknowns, unknowns]. unknowns i32[count], caller's numbering, repeats allowed.  OK or OUT_OF_MEMORY.
  *  Cost: (2 + count) flops × count for each entry of L on the paths from the unknowns to the root. */
 export function inverseBlock(f: Factor, unknowns: usize, count: i32, out: usize): i32 {
-  const s = f.symbolic, supernodes = s.supernodes;
-  const x = allocateArray(<f64>count * <f64>s.n, 3), buffer = allocateArray(<f64>count * <f64>s.deepest, 3);
+  const s = f.symbolic, supernodes = s.supernodes, side = stride(count);
+  const x = allocateArray(<f64>side * <f64>s.n, 3), buffer = allocateArray(gatherRoom(s, count), 3);
   const list = allocateArray(2 * <f64>supernodes, 2), mark = list + (<usize>supernodes << 2);
   const complete = x && buffer && list;
   if (complete) {
@@ -25,14 +25,14 @@ export function inverseBlock(f: Factor, unknowns: usize, count: i32, out: usize)
     clearMarks(list, from, supernodes, mark);
     for (let k = from; k < supernodes; ++k) {
       const t = i32At(list, k), first = i32At(s.first, t);
-      memory.fill(atF64(x, first * count), 0, <usize>((i32At(s.first, t + 1) - first) * count) << 3);
+      memory.fill(atF64(x, first * side), 0, <usize>((i32At(s.first, t + 1) - first) * side) << 3);
     }
-    for (let c = 0; c < count; ++c) setF64(x, i32At(s.place, i32At(unknowns, c)) * count + c, 1);
+    for (let c = 0; c < count; ++c) setF64(x, i32At(s.place, i32At(unknowns, c)) * side + c, 1);
     forwardSolve(f, x, count, list, from, supernodes, buffer);
     memory.fill(out, 0, <usize>(count * count) << 3);
     for (let k = from; k < supernodes; ++k) {
       const t = i32At(list, k), first = i32At(s.first, t);
-      rankUpdateLower(count, i32At(s.first, t + 1) - first, atF64(x, first * count), count, out, count, ADD);
+      rankUpdateLower(count, i32At(s.first, t + 1) - first, atF64(x, first * side), side, out, count, ADD);
     }
     mirror(count, out, count);
   }

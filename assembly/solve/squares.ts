@@ -5,7 +5,7 @@ import { allocateArray, release } from "../memory/heap";
 import { addF64, atF64, f64At, i32At, setF64, setI32 } from "../memory/access";
 import { OK, RUNNING } from "../memory/status";
 import { Factor } from "../factor/cholesky";
-import { forwardSolve } from "./triangular";
+import { forwardSolve, gatherRoom, stride } from "./triangular";
 
 /** Columns of one supernode that go up its path together. */
 const GROUP = 16;
@@ -17,7 +17,7 @@ export class Squares {
   factor: Factor;
   /** f64[n], caller's numbering: the diagonal. */
   diagonal: usize;
-  /** f64[GROUP × n], f64[GROUP × deepest]; i32[supernodes]: the path. */
+  /** f64[GROUP × n], f64[gatherRoom]; i32[supernodes]: the path. */
   x: usize;
   buffer: usize;
   list: usize;
@@ -35,7 +35,7 @@ export function squaresBegin(factor: Factor, diagonal: usize): Squares | null {
   job.factor = factor;
   job.diagonal = diagonal;
   job.x = allocateArray(<f64>GROUP * <f64>s.n, 3);
-  job.buffer = allocateArray(<f64>GROUP * <f64>s.deepest, 3);
+  job.buffer = allocateArray(gatherRoom(s, GROUP), 3);
   job.list = allocateArray(<f64>s.supernodes, 2);
   if (!job.x || !job.buffer || !job.list) { squaresRelease(job); return null; }
   return job;
@@ -54,16 +54,16 @@ export function squaresAdvance(job: Squares, budget: f64): i32 {
   let spent: f64 = 0;
   while (job.at < s.n) {
     if (spent >= budget) return RUNNING;
-    const own = i32At(s.supernodeOf, job.at), columns = min(GROUP, i32At(s.first, own + 1) - job.at);
+    const own = i32At(s.supernodeOf, job.at), columns = min(GROUP, i32At(s.first, own + 1) - job.at), side = stride(columns);
     let length = 0, entries: f64 = 0;
     for (let t = own; t >= 0; t = i32At(s.parent, t)) {
       const first = i32At(s.first, t), width = i32At(s.first, t + 1) - first;
       setI32(job.list, length++, t);
-      memory.fill(atF64(job.x, first * columns), 0, <usize>(width * columns) << 3);
+      memory.fill(atF64(job.x, first * side), 0, <usize>(width * side) << 3);
       entries += <f64>width * <f64>i32At(s.lead, t);
     }
     for (let c = 0; c < columns; ++c) {
-      setF64(job.x, (job.at + c) * columns + c, 1);
+      setF64(job.x, (job.at + c) * side + c, 1);
       setF64(job.diagonal, i32At(s.order, job.at + c), 0);
     }
     forwardSolve(job.factor, job.x, columns, job.list, 0, length, job.buffer);
@@ -71,7 +71,7 @@ export function squaresAdvance(job: Squares, budget: f64): i32 {
       const t = i32At(job.list, k), end = i32At(s.first, t + 1);
       for (let r = i32At(s.first, t); r < end; ++r) {
         for (let c = 0; c < columns; ++c) {
-          const v = f64At(job.x, r * columns + c);
+          const v = f64At(job.x, r * side + c);
           addF64(job.diagonal, i32At(s.order, job.at + c), v * v);
         }
       }

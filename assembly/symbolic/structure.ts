@@ -120,7 +120,6 @@ export function layPanels(s: Symbolic): bool {
     if (entries > 536870000) return false; // 4 GiB of panels
     s.panelFlops += panelFlops(width, below);
     if (width > s.widest) s.widest = width;
-    if (below > s.deepest) s.deepest = below;
     const under = <f64>width * <f64>((below + 1) & ~1);
     if (under > s.largestBelow) s.largestBelow = under;
     if (width + below > s.tallest) s.tallest = width + below;

@@ -16,8 +16,6 @@ export class Symbolic {
   /** Largest width, and largest width + below, of a supernode. */
   widest: i32;
   tallest: i32;
-  /** Longest list of rows below. */
-  deepest: i32;
   /** Largest width × below (rounded up to even) of a supernode. */
   largestBelow: f64;
   /** Entries of L, without the zeros that panels store. */
