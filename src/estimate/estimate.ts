@@ -107,6 +107,9 @@ export interface EstimateStatistics {
  *  moment. Not analysed: with 1 in its place the largest error among 60 000 readings of random networks that forget states now and then was 0.98 of the bound. */
 const FORGETTING = 4;
 
+/** From so many candidates on, kept marginals are brought up to date for them. */
+const MANY_CANDIDATES = 16;
+
 const optionNames = ["track", "tolerance", "onDoubt", "latencyBudget", "memoryLimit"];
 
 /**
@@ -579,7 +582,10 @@ export class Estimate {
     const list = (Array.isArray(input) ? input : [input]) as readonly MeasurementInput[];
     const candidates = list.map((candidate) => whiten(candidate, (state) => this.#dimensionOf(state)));
     for (const { states } of candidates) for (const state of states) this.#slotOf(state, "evaluate");
-    const { system, tracked } = this.#ready();
+    this.#ready();
+    // Kept numbers that are brought up to date serve the next questions, too.
+    if (this.#track === "all" && candidates.length >= MANY_CANDIDATES) this.#refresh();
+    const { system, tracked } = this.#engine;
     const current = this.#track === "all" && tracked.isCurrent(system, this.#trackedColumn(true)) ? tracked : undefined;
     this.#requireSure(current ? this.#engine.trackedBound : this.#engine.baseBound);
     const results = evaluate(system, candidates, () => this.#wholeSolution(), current);

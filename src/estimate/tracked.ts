@@ -54,6 +54,18 @@ export interface SavedTracked {
     | undefined;
 }
 
+/** Kept numbers as they lie in kernel memory. */
+export interface KeptView {
+  /** Blocks, d × d each. */
+  readonly blocks: Float64Array;
+  /** The block column by columns, `across` of them, `lead` apart. */
+  readonly column: Float64Array;
+  readonly lead: number;
+  readonly across: number;
+  /** For each slot two numbers: where its block begins in `blocks`, and its first row in `column`. */
+  readonly places: Int32Array;
+}
+
 export class Tracked {
   readonly #k = kernel();
   /** For each slot two i32: first f64 of its block, first row of the column. And the slots in order of arrival. */
@@ -342,6 +354,18 @@ export class Tracked {
   block(system: System, slot: number): Float64Array {
     return copyFloats(this.#blockAddress(slot), system.dimensionAt(slot) ** 2);
   }
+  /** All kept numbers where they lie: good until the next call that changes anything. */
+  view(): KeptView {
+    const { buffer } = this.#k.memory;
+    return {
+      blocks: new Float64Array(buffer, this.#blocks.address, this.#size),
+      column: new Float64Array(buffer, this.#column.address, this.#lead * this.#across),
+      lead: this.#lead,
+      across: this.#across,
+      places: new Int32Array(buffer, this.#places.address, 2 * this.#slots),
+    };
+  }
+
   /** The kept column at one slot, row-major: its dimension × that of the column's state. */
   columnAt(system: System, slot: number): Float64Array {
     const row = this.#placeOf(slot)[1]!;
