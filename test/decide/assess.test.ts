@@ -269,20 +269,28 @@ test("states come worst first within their quantity, fixed ones not at all, each
   expect(() => relativePrecision(network, ["P", "o"])).toThrow(/no coordinates in common/);
 });
 
-test("what determines a height: its two runs in the shares of their weights, and what its neighbour brings", () => {
-  // B from A to 2 mm; P from B twice, to 1 and 3 mm: weights 1 and 1/9, variance of P given B 0.9 mm², of P 4.9 mm².
+test("what determines a height: every reading by its share of the variance, and what its neighbour brings", () => {
+  // B from A to 2 mm; P from B twice, to 1 and 3 mm: weights 0.9 and 0.1. Variance of P: 4 + 0.81 × 1 + 0.01 × 9 = 4.9 mm², given B 0.9 mm².
+  // A dangling run from P says nothing about it.
   const network = networkOf(
-    [height("A", 0), height("B"), height("P")],
-    [levelled("A", "B", 1, 0.002), levelled("B", "P", 1, 0.001, "good"), levelled("B", "P", 1, 0.003, "poor")],
+    [height("A", 0), height("B"), height("P"), height("D")],
+    [
+      levelled("A", "B", 1, 0.002, "long"),
+      levelled("B", "P", 1, 0.001, "good"),
+      levelled("B", "P", 1, 0.003, "poor"),
+      levelled("P", "D", 1, 0.001, "dangling"),
+    ],
   );
   network.adjustment.solve();
   const [weakness] = weaknesses(network, ["P"]);
   expect(weakness!.deviation).toBeCloseTo(Math.sqrt(4.9e-6), 12);
-  expect(weakness!.deviationAlone).toBeCloseTo(Math.sqrt(0.9e-6), 12);
-  expect(weakness!.readings).toBe(2);
-  expect(weakness!.determinedBy.map(({ reading, share }) => [reading.name, Number(share.toFixed(9))])).toEqual([
-    ["good", 0.9],
-    ["poor", 0.1],
+  // with D held as well: 1 / (1 + 1/9 + 1) mm²
+  expect(weakness!.deviationAlone).toBeCloseTo(Math.sqrt(1e-6 / (2 + 1 / 9)), 12);
+  expect(weakness!.readings).toBe(3);
+  expect(weakness!.determinedBy.map(({ reading, share }) => [reading.name, Number((share * 4.9).toFixed(9))])).toEqual([
+    ["long", 4],
+    ["good", 0.81],
+    ["poor", 0.09],
   ]);
 });
 

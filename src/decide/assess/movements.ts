@@ -2,13 +2,14 @@
 import { perTestLevel } from "../family-level.js";
 import { displacementTest, type MovementVerdict } from "../movement.js";
 import type { Network } from "./network.js";
-import { differenceOf } from "./precision.js";
+import { deviationsOf, differenceOf } from "./precision.js";
 
 export interface Movement {
   readonly first: string;
   readonly second: string;
   /** Second minus first; SI units and radians. */
   readonly displacement: Float64Array;
+  readonly standardDeviations: Float64Array;
   readonly verdict: MovementVerdict;
 }
 
@@ -25,8 +26,8 @@ export function movements(
   if (pairs.length === 0) return [];
   const each = perTestLevel(level, pairs.length);
   return pairs.map(([first, second]) => {
-    const { difference, covariance } = differenceOf(network, first, second);
+    const { dimension, difference, covariance } = differenceOf(network, first, second);
     const verdict = displacementTest({ displacement: difference, covariance }, { level: each, power, name: second });
-    return { first, second, displacement: difference, verdict };
+    return { first, second, displacement: difference, standardDeviations: deviationsOf(covariance, dimension), verdict };
   });
 }

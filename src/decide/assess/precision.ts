@@ -63,7 +63,7 @@ export function leadingBlock(matrix: Float64Array, from: number, to: number): Fl
   return Float64Array.from({ length: to * to }, (_, at) => matrix[Math.floor(at / to) * from + (at % to)]!);
 }
 
-export function semiAxesOf(covariance: Float64Array, dimension: 1 | 2 | 3, confidence: number): SemiAxis[] {
+function semiAxesOf(covariance: Float64Array, dimension: 1 | 2 | 3, confidence: number): SemiAxis[] {
   if (dimension === 1) return [{ length: confidenceScale(1, confidence) * Math.sqrt(covariance[0]!) }];
   if (dimension === 3)
     return errorEllipsoid(covariance, { confidence }).axes.map(({ length, bearing, elevation }) => ({ length, bearing, elevation }));
@@ -74,7 +74,7 @@ export function semiAxesOf(covariance: Float64Array, dimension: 1 | 2 | 3, confi
   ];
 }
 
-const deviationsOf = (covariance: Float64Array, dimension: number): Float64Array =>
+export const deviationsOf = (covariance: Float64Array, dimension: number): Float64Array =>
   Float64Array.from({ length: dimension }, (_, k) => Math.sqrt(covariance[k * (dimension + 1)]!));
 
 const quantities: readonly Quantity[] = ["length", "angle", "time", "plain"];
