@@ -2,8 +2,9 @@
 import { readFileSync } from "node:fs";
 import { Command, CommanderError } from "commander";
 import init, { fusedIsAvailable } from "../../bindings/loader.js";
-import { printDemo } from "../demo/print.js";
 import { SigmatideError } from "../errors.js";
+import { addAssessCommand } from "./assess.js";
+import { addDemoCommand } from "./demo.js";
 import { exits } from "./exits.js";
 import { addInverseCommand } from "./inverse.js";
 
@@ -29,24 +30,22 @@ function versionOfPackage(): string {
 export async function run(words: readonly string[]): Promise<number> {
   endQuietlyOnClosedPipe();
   const program = new Command("sigmatide")
-    .description("Uncertainty of sparse least-squares estimates: factor, solutions and inverse of large information matrices.")
+    .description(
+      "Where everything is that was measured, how sure that is, and which readings to doubt; inverses of large information matrices.",
+    )
     .version(versionOfPackage(), "--version", "print the version")
     .helpOption("--help", "print this help")
     .exitOverride()
-    .addHelpText("after", "\nExit codes: 0 fine, 1 a verdict that asks for attention, 2 bad input, 3 an error inside the program.");
+    .addHelpText("after", "\nExit codes: 0 fine, 1 a state fails its limit, 2 bad input, 3 an error inside the program.");
+  let outcome: number = exits.fine;
+  addAssessCommand(program, loadKernel, (exitCode) => {
+    outcome = exitCode;
+  });
+  addDemoCommand(program, loadKernel);
   addInverseCommand(program, loadKernel);
-  program
-    .command("demo")
-    .description("print the standard deviations of a small invented survey network, worst first")
-    .helpOption("--help", "print this help")
-    .exitOverride()
-    .action(async () => {
-      await loadKernel();
-      process.stdout.write(printDemo());
-    });
   try {
     await program.parseAsync(words, { from: "user" });
-    return exits.fine;
+    return outcome;
   } catch (error) {
     return exitCodeOf(error);
   }

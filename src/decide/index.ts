@@ -1,4 +1,17 @@
 // sigmatide/decide: from covariances to verdicts. Each file states its formula and source.
+export { type Assessment, type AssessmentOptions, assess } from "./assess/assessment.js";
+export { type Movement, movements } from "./assess/movements.js";
+export type { GivenReading, Network } from "./assess/network.js";
+export {
+  type Limits,
+  type RelativePrecision,
+  relativePrecision,
+  type SemiAxis,
+  type StatePrecision,
+  statePrecisions,
+} from "./assess/precision.js";
+export { type Control, putBack, type Screening, type ScreeningOptions, type Suspect, screenReadings } from "./assess/screening.js";
+export { type Weakness, weaknesses } from "./assess/weakness.js";
 export { bestAssignment } from "./associate/best-assignment.js";
 export type { Association, Pairing } from "./associate/candidates.js";
 export { type InnovationCovariance, jointCompatibility } from "./associate/joint-compatibility.js";

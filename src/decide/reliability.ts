@@ -13,6 +13,11 @@ const grades = [
   ["weakly controlled", 0.01],
 ] as const;
 
+/** The grade of a reading, by the share of a blunder that shows in its residual. */
+export function gradeOf(redundancy: number): Reliability["verdict"] {
+  return grades.find(([, lowest]) => redundancy >= lowest)?.[0] ?? "uncontrolled";
+}
+
 export interface Reliability {
   /** Redundancy number: the share of a bias that shows in the reading's own residual, summed over its components. */
   readonly redundancy: number;
@@ -53,7 +58,7 @@ export function reliability(
     minimalDetectableBias[k] = Math.sqrt(lambda / shown); // Infinity when nothing shows
   }
   const weakest = uncontrolled.length > 0 ? 0 : controlled.at(-1)!.redundancy;
-  const verdict = grades.find(([, lowest]) => weakest >= lowest)?.[0] ?? "uncontrolled";
+  const verdict = gradeOf(weakest);
   const found = [...minimalDetectableBias].map(inWords).join(", ");
   return {
     redundancy,

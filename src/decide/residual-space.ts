@@ -4,7 +4,7 @@ import { symmetricEigen } from "./symmetric-eigen.js";
 
 /** Below this share of a direction's variance its residual is rounding, and no test of it means anything: a bias there would have to pass
  *  some 4 000 standard deviations to be seen. */
-const noRedundancy = 1e-6;
+export const leastRedundancy = 1e-6;
 
 /** One direction of a reading: noise of unit variance in it leaves a residual of variance `redundancy`. */
 interface Direction {
@@ -35,8 +35,8 @@ export function residualSpace(noiseCovariance: Matrix, residualCovariance: Matri
   return {
     dimension,
     noiseFactor,
-    controlled: directions.filter(({ redundancy }) => redundancy > noRedundancy),
-    uncontrolled: directions.filter(({ redundancy }) => redundancy <= noRedundancy),
+    controlled: directions.filter(({ redundancy }) => redundancy > leastRedundancy),
+    uncontrolled: directions.filter(({ redundancy }) => redundancy <= leastRedundancy),
     redundancy: Math.max(
       0,
       values.reduce((sum, value) => sum + value, 0),

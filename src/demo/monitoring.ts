@@ -73,7 +73,17 @@ function positionAt(mark: Mark, epoch: number): number[] {
   return [x + share * movement.seaward * seaward.x, y + share * movement.seaward * seaward.y, z - share * movement.down];
 }
 
-const markState = (mark: Mark, epoch: number): StateAt => point(`${mark.name}@${epoch}`, positionAt(mark, epoch));
+const stateName = (mark: Mark, epoch: number): string => `${mark.name}@${epoch}`;
+
+/** Every mark in every later epoch against the first: the pairs of states to compare. */
+export function epochComparisons(): { mark: string; bay: number; epoch: number; states: readonly [string, string] }[] {
+  const later = Array.from({ length: epochs - 1 }, (_, k) => k + 2);
+  return marks.flatMap((mark) =>
+    later.map((epoch) => ({ mark: mark.name, bay: mark.bay, epoch, states: [stateName(mark, 1), stateName(mark, epoch)] as const })),
+  );
+}
+
+const markState = (mark: Mark, epoch: number): StateAt => point(stateName(mark, epoch), positionAt(mark, epoch));
 
 /** The log of the monitoring, entry by entry, and the truth beside it. The same options give the same log. */
 export function quayMonitoring(options: MonitoringOptions = {}): { entries: Iterable<LogEntry>; truth: MonitoringTruth } {
@@ -84,7 +94,7 @@ export function quayMonitoring(options: MonitoringOptions = {}): { entries: Iter
     .sort((a, b) => b.down - a.down);
   const places = [...stations, ...references].map(({ name, at }) => [name, at] as const);
   const markPlaces = marks.flatMap((mark) =>
-    Array.from({ length: epochs }, (_, k) => [`${mark.name}@${k + 1}`, positionAt(mark, k + 1)] as const),
+    Array.from({ length: epochs }, (_, k) => [stateName(mark, k + 1), positionAt(mark, k + 1)] as const),
   );
   const truth: MonitoringTruth = {
     seed,
@@ -123,7 +133,7 @@ function* monitoringLog(seed: number, rounds: number): Generator<LogEntry> {
     yield { type: "state", name, kind: "point-3d", value: Float64Array.from(at, Math.round), fixed: false };
 
   for (let epoch = 1; epoch <= epochs; epoch++) {
-    for (const mark of marks) yield { type: "state", name: `${mark.name}@${epoch}`, kind: "point-3d", fixed: false };
+    for (const mark of marks) yield { type: "state", name: stateName(mark, epoch), kind: "point-3d", fixed: false };
     for (const [k, station] of stations.entries()) {
       for (let round = 1; round <= rounds; round++) {
         const setName = `${station.name}/e${epoch}${rounds > 1 ? `/r${round}` : ""}`;

@@ -4,14 +4,14 @@ import { SigmatideError } from "../errors.js";
 import { AdjustedReading, type Fit } from "./adjustment/adjusted-reading.js";
 import { AdjustedState } from "./adjustment/adjusted-state.js";
 import { Damping } from "./adjustment/damping.js";
-import type { EstimateLike } from "./adjustment/estimate-like.js";
+import type { EstimateLike, LinearMeasurement } from "./adjustment/estimate-like.js";
 import { noConvergence, noStartingValue } from "./adjustment/failures.js";
 import type { Reading, StateDeclaration } from "./reading.js";
 import type { ReadingKind } from "./reading-form.js";
 import { findForm, type ReadingKindName, readingKinds } from "./reading-kinds.js";
 import type { RobustWeight } from "./robust.js";
 import { startingValue } from "./starting/starting-values.js";
-import { stateKinds } from "./states.js";
+import { type StateKindName, stateKinds } from "./states.js";
 
 export interface AdjustmentOptions {
   /** Bends the weight of large residuals; the covariances then are those of the weights found. Default: none, plain least squares. */
@@ -23,6 +23,8 @@ export interface AdjustmentOptions {
   readonly linearizationTolerance?: number;
   /** Default 100 commits. */
   readonly maximumIterations?: number;
+  /** Told of each iteration as it ends: solving a large network takes a while. */
+  readonly onIteration?: (iteration: Iteration) => void;
 }
 
 /** One commit of the estimate and what came of it. */
@@ -43,6 +45,21 @@ export interface AdjustmentReport {
   readonly started: readonly string[];
 }
 
+/** A state as it stands. */
+export interface StateFacts {
+  readonly name: string;
+  readonly kind: StateKindName;
+  readonly fixed: boolean;
+  /** In its kind's stored form, a copy; undefined before it has a starting value. */
+  readonly value: Float64Array | undefined;
+  /** The estimate's own name of it; a fixed or new state has none. */
+  readonly id: number | undefined;
+}
+
+function factsOf({ name, kind, fixed, value, id }: AdjustedState): StateFacts {
+  return { name, kind: kind.name, fixed, value: value?.slice(), id };
+}
+
 /** A reading as the adjustment holds it. */
 export type ReadingKey = number;
 
@@ -56,7 +73,8 @@ const largestTurn = 0.1;
  * States and readings on their way into an estimate, and the values they come to. Add them as they arrive; `solve` lets everything added
  * count. Units are SI and radians; covariances are in the states' local coordinates.
  *
- * The estimate's unknowns are offsets from each state's origin; use `id` to ask the estimate itself (pairs, candidates, redundancy).
+ * The estimate's unknowns are offsets from each state's origin; ask the estimate itself about pairs and redundancy by a
+ * state's `id`, about readings that might come by `linearize`.
  * Work follows the change: after the first solve only readings near what moved are looked at again.
  */
 export class Adjustment {
@@ -64,6 +82,7 @@ export class Adjustment {
   readonly #robust: RobustWeight | undefined;
   readonly #tolerance: number;
   readonly #maximumIterations: number;
+  readonly #onIteration: ((iteration: Iteration) => void) | undefined;
   readonly #states = new Map<string, AdjustedState>();
   readonly #readings = new Map<ReadingKey, AdjustedReading>();
   readonly #named = new Map<string, ReadingKey>();
@@ -76,11 +95,12 @@ export class Adjustment {
   #disturbed = false;
 
   constructor(estimate: EstimateLike, options: AdjustmentOptions = {}) {
-    const { robust, linearizationTolerance = 1e-3, maximumIterations = 100 } = options;
+    const { robust, linearizationTolerance = 1e-3, maximumIterations = 100, onIteration } = options;
     this.#estimate = estimate;
     this.#robust = robust;
     this.#tolerance = linearizationTolerance;
     this.#maximumIterations = maximumIterations;
+    this.#onIteration = onIteration;
   }
 
   /** Declares a state. Without a value one is sought from its readings. @throws {SigmatideError} `NAME_TAKEN` */
@@ -96,37 +116,15 @@ export class Adjustment {
    * @throws {SigmatideError} `UNKNOWN_STATE`; `KINDS_DO_NOT_FIT`; `NOTHING_TO_ESTIMATE`: all its states are fixed; `NAME_TAKEN`.
    */
   addReading(reading: Reading<ReadingKindName | ReadingKind>): ReadingKey {
-    const states = reading.states.map((name) => this.#state(name));
-    const kind = typeof reading.kind === "string" ? readingKinds[reading.kind] : reading.kind;
-    const form = findForm(
-      kind,
-      states.map((state) => state.kind.name),
-    );
-    if (form === undefined)
-      throw new SigmatideError(
-        "KINDS_DO_NOT_FIT",
-        `The reading cannot join ${states.map(({ name, kind }) => `"${name}" (${kind.name})`).join(", ")}.`,
-        {
-          states: reading.states,
-        },
-      );
-    if (states.every(({ fixed }) => fixed))
-      throw new SigmatideError(
-        "NOTHING_TO_ESTIMATE",
-        `Every state of the reading on ${reading.states.join(", ")} is fixed: leave it out, or free a state.`,
-        {
-          states: reading.states,
-        },
-      );
+    const adjusted = this.#prepare(reading);
     if (reading.name !== undefined && this.#named.has(reading.name))
       throw new SigmatideError("NAME_TAKEN", `There is a reading "${reading.name}" already: give each named reading a name of its own.`, {
         name: reading.name,
       });
-    const adjusted = new AdjustedReading(reading, form, states, this.#robust);
     const key = this.#nextKey++;
     this.#readings.set(key, adjusted);
     if (reading.name !== undefined) this.#named.set(reading.name, key);
-    for (const state of states) state.readings.add(adjusted);
+    for (const state of adjusted.states) state.readings.add(adjusted);
     this.#arrived.add(adjusted);
     this.#pending = true;
     return key;
@@ -159,16 +157,24 @@ export class Adjustment {
     this.#estimate.commit();
   }
 
+  /**
+   * A reading as `Estimate.evaluate` takes it: its linear model at the present values, on the estimate's own ids. It need not be part of the
+   * adjustment, and does not become so. Robust weights are left aside.
+   * @throws {SigmatideError} as `addReading`; `NO_VALUE`: one of its states has not been solved for.
+   */
+  linearize(reading: Reading<string | ReadingKind>): LinearMeasurement {
+    const adjusted = this.#prepare(reading);
+    const unsolved = adjusted.freeStates.find(({ id }) => id === undefined);
+    if (unsolved)
+      throw new SigmatideError("NO_VALUE", `State "${unsolved.name}" has not been solved for yet: solve first.`, { state: unsolved.name });
+    return adjusted.measurementOf(adjusted.modelHere().model);
+  }
+
   /** The present value of a state in its kind's stored form; before the first solve, the value it was given. A copy. */
   value(name: string): Float64Array {
     const { value } = this.#state(name);
     if (value === undefined) throw new SigmatideError("NO_VALUE", `State "${name}" has no value yet: solve first.`, { state: name });
     return value.slice();
-  }
-
-  /** The estimate's own name of a state; a fixed or new state has none. */
-  id(name: string): number | undefined {
-    return this.#state(name).id;
   }
 
   /** The covariance of a state in local coordinates at its present value, row-major; zero for a fixed one. */
@@ -184,8 +190,13 @@ export class Adjustment {
   }
 
   /** Every state in order, with its value. */
-  *states(): Generator<{ name: string; kind: string; fixed: boolean; value: Float64Array | undefined; id: number | undefined }> {
-    for (const { name, kind, fixed, value, id } of this.#states.values()) yield { name, kind: kind.name, fixed, value: value?.slice(), id };
+  *states(): Generator<StateFacts> {
+    for (const state of this.#states.values()) yield factsOf(state);
+  }
+
+  /** One state. @throws {SigmatideError} `UNKNOWN_STATE` */
+  state(name: string): StateFacts {
+    return factsOf(this.#state(name));
   }
 
   /** Every reading that counts, in order: its residual (measured minus predicted) at the present values and its robust weight. */
@@ -277,7 +288,9 @@ export class Adjustment {
       if (relinearized === 0 && !damping.strengthen(this.#states.values()))
         throw noConvergence("DIVERGED", "No step makes the readings fit better, however short", this.#readings.values());
     }
-    iterations.push({ costBefore, costAfter, accepted, damping: strength, movedStates: trial.size, relinearized });
+    const iteration = { costBefore, costAfter, accepted, damping: strength, movedStates: trial.size, relinearized };
+    iterations.push(iteration);
+    this.#onIteration?.(iteration);
     return accepted && holds && strength === 0 && relinearized === 0;
   }
 
@@ -326,13 +339,7 @@ export class Adjustment {
     for (const reading of this.#arrived) {
       const model = reading.linearize();
       for (const state of reading.freeStates) state.id ??= this.#estimate.addState(state.kind.dimension, { name: state.name });
-      const { name, standardDeviations, covariance } = reading.reading;
-      reading.measurement = this.#estimate.addMeasurement({
-        ...model,
-        states: reading.freeStates.map(({ id }) => id!),
-        ...(standardDeviations ? { standardDeviations } : { covariance: covariance! }),
-        ...(name === undefined ? {} : { name }),
-      });
+      reading.measurement = this.#estimate.addMeasurement(reading.measurementOf(model));
       this.#arrived.delete(reading);
     }
   }
@@ -368,6 +375,33 @@ export class Adjustment {
     if (adjusted.reading.name !== undefined) this.#named.delete(adjusted.reading.name);
     for (const state of adjusted.states) state.readings.delete(adjusted);
     adjusted.leave();
+  }
+
+  /** A reading with its states, not yet part of anything. */
+  #prepare(reading: Reading<string | ReadingKind>): AdjustedReading {
+    const states = reading.states.map((name) => this.#state(name));
+    const kind = typeof reading.kind === "string" ? readingKinds[reading.kind as ReadingKindName] : reading.kind;
+    const form = findForm(
+      kind,
+      states.map((state) => state.kind.name),
+    );
+    if (form === undefined)
+      throw new SigmatideError(
+        "KINDS_DO_NOT_FIT",
+        `The reading cannot join ${states.map(({ name, kind }) => `"${name}" (${kind.name})`).join(", ")}.`,
+        {
+          states: reading.states,
+        },
+      );
+    if (states.every(({ fixed }) => fixed))
+      throw new SigmatideError(
+        "NOTHING_TO_ESTIMATE",
+        `Every state of the reading on ${reading.states.join(", ")} is fixed: leave it out, or free a state.`,
+        {
+          states: reading.states,
+        },
+      );
+    return new AdjustedReading(reading, form, states, this.#robust);
   }
 
   #key(reading: ReadingKey | string): ReadingKey {

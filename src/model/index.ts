@@ -1,5 +1,12 @@
-export type { EstimateLike } from "./adjustment/estimate-like.js";
-export { Adjustment, type AdjustmentOptions, type AdjustmentReport, type Iteration, type ReadingKey } from "./adjustment.js";
+export type { EstimateLike, LinearMeasurement } from "./adjustment/estimate-like.js";
+export {
+  Adjustment,
+  type AdjustmentOptions,
+  type AdjustmentReport,
+  type Iteration,
+  type ReadingKey,
+  type StateFacts,
+} from "./adjustment.js";
 export { type JacobianWarning, type OwnFunction, ownFunction } from "./own-function.js";
 export type { Quantity } from "./quantities.js";
 export type { Reading, StateDeclaration } from "./reading.js";

@@ -23,7 +23,7 @@ test("the calibration of a thermometer: JCGM 100:2008 (GUM), Annex H.3, Table H.
 
   const variance = adjustment.cost() / (t.length - 2);
   const deviation = (name: string) => Math.sqrt(variance * adjustment.covariance(name)[0]!);
-  const covariance = estimate.cross(adjustment.id("y1")!, adjustment.id("y2")!)[0]!;
+  const covariance = estimate.cross(adjustment.state("y1").id!, adjustment.state("y2").id!)[0]!;
   const [v1, v2] = ["y1", "y2"].map((name) => adjustment.covariance(name)[0]!) as [number, number];
   const [y1, y2] = ["y1", "y2"].map((name) => adjustment.value(name)[0]!) as [number, number];
   // Published figures, each to its last printed digit.
@@ -63,5 +63,5 @@ test("a level circuit of two new points: exact cofactors 4/19, 5/19, 1/19 from t
   expect(iterations).toHaveLength(1);
   expect(adjustment.covariance("Q")[0]).toBeCloseTo(4 / 19, 14);
   expect(adjustment.covariance("R")[0]).toBeCloseTo(5 / 19, 14);
-  expect(estimate.cross(adjustment.id("Q")!, adjustment.id("R")!)[0]).toBeCloseTo(1 / 19, 14);
+  expect(estimate.cross(adjustment.state("Q").id!, adjustment.state("R").id!)[0]).toBeCloseTo(1 / 19, 14);
 });

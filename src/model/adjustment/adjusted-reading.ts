@@ -5,7 +5,7 @@ import type { ReadingForm, ReadingKind } from "../reading-form.js";
 import type { RobustWeight } from "../robust.js";
 import type { StateAt } from "../states.js";
 import type { AdjustedState } from "./adjusted-state.js";
-import type { Linearization } from "./estimate-like.js";
+import type { Linearization, LinearMeasurement } from "./estimate-like.js";
 import { type Whiten, whitener } from "./whiten.js";
 
 /** Offsets of states that are being tried; the others stand where they are. */
@@ -81,11 +81,8 @@ export class AdjustedReading {
     return this.#form.residual(states, this.reading.value, this.reading.setup);
   }
 
-  /**
-   * Linearizes at the present values, in the states' offsets from their origins, and takes the cost and the weight there.
-   * @returns the model as the estimate is to hold it, scaled by the root of the robust weight.
-   */
-  linearize(): Linearization {
+  /** The linear model at the present values, and the residual there. */
+  modelHere(): { model: Linearization; residual: Float64Array } {
     const at = this.states.map((state) => state.now());
     const residual = this.#residual(at);
     const jacobians = this.#jacobians(
@@ -94,7 +91,28 @@ export class AdjustedReading {
     );
     const atOrigin = residual.slice();
     for (const [k, state] of this.freeStates.entries()) addProduct(atOrigin, jacobians[k]!, state.offset, 1);
-    this.#model = { jacobians, residual: atOrigin };
+    return { model: { jacobians, residual: atOrigin }, residual };
+  }
+
+  /** A linear model of the reading as the estimate takes it. Its free states are in the estimate. */
+  measurementOf(model: Linearization): LinearMeasurement {
+    const { name, standardDeviations, covariance } = this.reading;
+    return {
+      ...model,
+      states: this.freeStates.map(({ id }) => id!),
+      ...(standardDeviations ? { standardDeviations } : { covariance: covariance! }),
+      ...(name === undefined ? {} : { name }),
+    };
+  }
+
+  /**
+   * Linearizes at the present values, in the states' offsets from their origins, and takes the cost and the weight there.
+   * @returns the model as the estimate is to hold it, scaled by the root of the robust weight.
+   */
+  linearize(): Linearization {
+    const { model, residual } = this.modelHere();
+    const { jacobians, residual: atOrigin } = model;
+    this.#model = model;
     this.#offsetsWhenMade = this.states.map(({ offset }) => offset);
     const { cost, weight } = this.#assess(residual);
     if (!Number.isFinite(cost)) throw this.#notFinite(residual);
