@@ -51,6 +51,7 @@ export {
 export { enterRows, settleRows, withdrawEntered, dropRow } from "./ledger/rows";
 export {
   factorInnovation, scaleColumns, updateKept, takeColumn, followLeaf, extendColumn, blocksOfInverse, forgetPast,
+  suspectStates,
 } from "./ledger/tracked";
 export {
   ledgerX, ledgerGram, ledgerOwnGram, ledgerAdded, ledgerRemoved, ledgerEntries, ledgerBytes, ledgerFlops, ledgerLogDeterminant, strongestRow,

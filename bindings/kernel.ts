@@ -171,6 +171,7 @@ export interface KernelExports {
   extendColumn(ledger: number, slot: number, across: number, places: number, column: number, lead: number, scratch: number): void;
   blocksOfInverse(ledger: number, inverse: number, places: number, blocks: number): void;
   forgetPast(ledger: number, arrivals: number, blocks: number, largest: number): void;
+  suspectStates(ledger: number, arrivals: number, blocks: number, largest: number, limit: number, list: number, room: number): number;
 }
 
 /** What kernel calls return; a positive number is 1 + the offending unknown. The same as assembly/memory/status.ts. */

@@ -213,7 +213,7 @@ let chunkRows: i32 = 0, chunkFailed: bool = false, chunkId: i32 = 0, chunkFrom: 
 function reserveChunk(l: Ledger, x: usize, width: i32, node: i32): void {
   const chunk = chunkOf(l, node), count = load<i32>(chunk, 4), room = load<i32>(chunk, 8);
   if (count + chunkRows <= room || chunkFailed) return;
-  const next = (count + chunkRows + (count >> 1) + 3) & ~1;
+  const next = (count + chunkRows + (count >> 2) + 3) & ~1;
   const bytes = <f64>next * <f64>(4 + 8 * width), address = allocateArray(bytes, 0);
   if (!address) { chunkFailed = true; return; }
   if (count) {

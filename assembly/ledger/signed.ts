@@ -36,8 +36,8 @@ function releaseAll(a: usize, b: usize, c: usize, d: usize, e: usize, f: usize, 
 /** Room for so many rows of each sign. OK, or OUT_OF_MEMORY with nothing changed but room. */
 export function reserveRows(l: Ledger, added: i32, removed: i32): i32 {
   if (added <= l.addedRoom && removed <= l.removedRoom) return OK;
-  const a = added <= l.addedRoom ? l.addedRoom : (added + (added >> 1) + 15) & ~7;
-  const r = removed <= l.removedRoom ? l.removedRoom : (removed + (removed >> 1) + 15) & ~7;
+  const a = added <= l.addedRoom ? l.addedRoom : (added + (added >> 3) + 31) & ~7;
+  const r = removed <= l.removedRoom ? l.removedRoom : (removed + (removed >> 3) + 31) & ~7;
   const sAdded = widen(l.sAdded, l.added, l.added, l.addedRoom, a, a), kAdded = widen(l.kAdded, l.added, l.added, l.addedRoom, a, a);
   const sCross = widen(l.sCross, l.added, l.removed, l.addedRoom, a, r), kCross = widen(l.kCross, l.added, l.removed, l.addedRoom, a, r);
   const sRemoved = widen(l.sRemoved, l.removed, l.removed, l.removedRoom, r, r);

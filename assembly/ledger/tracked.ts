@@ -5,7 +5,7 @@
  *  base moves nothing: blocks one after another, each d × d; the block column by columns, `lead` numbers from one to the next. Two tables
  *  say where: `places` holds two i32 a slot, first f64 of its block and first row of the block column; `arrivals` the slots in that order.
  *  Source: Woodbury (1950); the additive form of the covariance update in sequential least squares (Plackett 1950). */
-import { atF64, f64At, i32At, setF64, u32At } from "../memory/access";
+import { atF64, f64At, i32At, setF64, setI32, u32At } from "../memory/access";
 import { factorPanel } from "../dense/factor-panel";
 import { madd } from "../dense/madd";
 import { inverseOfProduct } from "../dense/inverse-of-product";
@@ -289,4 +289,21 @@ export function forgetPast(l: Ledger, arrivals: usize, block: usize, largest: us
     store<f64>(largest, trace);
     block += <usize>(d * d) << 3;
   }
+}
+
+/** Lists the ranks of states whose largest past trace passes `limit` times the present one, as many as `room` holds; returns how many there
+ *  are. */
+export function suspectStates(l: Ledger, arrivals: usize, block: usize, largest: usize, limit: f64, list: usize, room: i32): i32 {
+  let count = 0;
+  for (let rank = 0; rank < l.slots; ++rank, largest += 8) {
+    const d = slotDimension(l, i32At(arrivals, rank));
+    let trace: f64 = 0;
+    for (let j = 0; j < d; ++j) trace += f64At(block, j * (d + 1));
+    if (!(load<f64>(largest) <= limit * trace)) {
+      if (count < room) setI32(list, count, rank);
+      ++count;
+    }
+    block += <usize>(d * d) << 3;
+  }
+  return count;
 }

@@ -8,7 +8,7 @@ import { type Base, baseSteps, isSingular, type Singular } from "./base.js";
 import { boundOfBase, closedBound } from "./bound.js";
 import { assemblySteps } from "./information.js";
 import { type Leaf, splitLeaves } from "./leaf.js";
-import { backwardCost, carryingCost, inverseCost, keptLimit, rebaseCost, rebasePays, subtractionSpoils } from "./policy.js";
+import { backwardCost, carryingCost, inverseCost, keptLimit, pathCost, rebaseCost, rebasePays, subtractionSpoils } from "./policy.js";
 import { countRows, type OwnedRows, System, type SystemEvent, type World } from "./system.js";
 import { type SavedTracked, Tracked } from "./tracked.js";
 import { findUndetermined } from "./undetermined.js";
@@ -190,8 +190,9 @@ export class Engine {
     if (track && this.tracked.valid && subtractionSpoils(strength * this.tracked.ratio, this.tracked.error)) {
       // At worst; what it did is known once the kept numbers have taken it in.
       this.tracked.refresh(this.system, column);
-      if (this.trackedBound > keptLimit(this.#baseBound)) {
-        this.tracked.valid = false;
+      const limit = keptLimit(this.#baseBound);
+      if (this.trackedBound > limit) {
+        this.tracked.valid = this.#renewSuspects(column, limit);
         reasons.push(`a reading made what it reads ${strength.toExponential(1)} times stronger: kept marginals are computed afresh`);
         outcome = { ...outcome, because: `${outcome.because}; ${reasons[0]}` };
       }
@@ -456,7 +457,7 @@ export class Engine {
     const isCurrent = this.tracked.isCurrent(system, column);
     if (isCurrent || this.#keepsNumbers()) {
       if (!isCurrent) this.tracked.refresh(system, column);
-      if (this.keptAreGood(tolerance)) return;
+      if (this.keptAreGood(tolerance) || this.#renewSuspects(column, Math.min(tolerance, keptLimit(this.baseBound)))) return;
     }
     if (system.events.length > 0) {
       if (!this.#renewedForReading(world)) {
@@ -482,6 +483,20 @@ export class Engine {
   /** Whether kept numbers are as good as they have to be, or nothing would be gained. */
   keptAreGood(tolerance: number): boolean {
     return this.trackedBound <= Math.min(tolerance, keptLimit(this.baseBound)) || this.baseBound > tolerance;
+  }
+
+  /** Computes kept blocks afresh whose bound passes `limit`, one by one, where that is cheaper than all of them, and then the column. */
+  #renewSuspects(column: number, limit: number): boolean {
+    const { system, tracked } = this;
+    const { costs } = system.base;
+    // With room to spare: bounds grow a little with every leaf.
+    const ratio = limit / (4 * Math.max(tracked.error, system.bound()));
+    if (!(ratio > 2)) return false;
+    const path = pathCost(this.#flopsPerRow ?? 2 * FIRST_PATH_SHARE * costs.nonzeros);
+    const most = Math.floor((inverseCost(costs) + rebaseCost(costs, system.slots, system.slots)) / path);
+    if (!tracked.renewSuspects(system, ratio, most)) return false;
+    tracked.refresh(system, column);
+    return this.trackedBound <= limit;
   }
 
   /** What `restore` needs, without copies of rows; undefined before the first commit. */

@@ -11,10 +11,12 @@ const nanoseconds = {
   solveEntry: 0.7,
   /** One entry of the ledger's columns times one new column: compared with it, and combined with it. */
   ledgerEntry: 0.6,
+  /** One flop of a column carried forward along its path. */
+  pathFlop: 0.2,
   /** One number of a leaf times one column, forward and back. */
   leafNumber: 1.5,
   /** Order and symbolic analysis, for one state. */
-  analysisState: 1500,
+  analysisState: 2000,
   /** Assembling the information matrix, for one measurement. */
   assembledMeasurement: 250,
 } as const;
@@ -54,6 +56,9 @@ export const backwardCost = (columns: number, nonzeros: number): number => colum
 /** Nanoseconds of the selected inverse: about 2.3 times its factor. */
 export const inverseCost = (base: BaseCosts): number =>
   2.3 * (base.flops * nanoseconds.factorFlop + base.nonzeros * nanoseconds.factorEntry);
+
+/** Nanoseconds of one column carried forward along its path, which takes so many flops. */
+export const pathCost = (flops: number): number => flops * nanoseconds.pathFlop;
 
 /** Whether a new base pays: what carrying on has cost beyond it since the last one comes to its price, so the total is at most twice
  *  that of the best policy that knows the future (the ski-rental bound; Karlin, Manasse, Rudolph, Sleator 1988); or the ledger has

@@ -2,8 +2,9 @@
 // when they are read, by what the rows since have changed; or computed afresh when that is cheaper or more exact.
 import { status } from "../../bindings/kernel.js";
 import { kernel } from "../../bindings/loader.js";
-import { addressOrThrow, copyFloats, writeFloats } from "../../bindings/memory.js";
+import { addressOrThrow, copyFloats, copyInts, writeFloats } from "../../bindings/memory.js";
 import type { Leaf } from "./leaf.js";
+import { eachMarginal } from "./marginals.js";
 import type { System } from "./system.js";
 
 /** Unit columns carried forward together for blocks of new states: their product is square in this. */
@@ -341,6 +342,40 @@ export class Tracked {
     const scratch = system.scratch(8 * WIDEST);
     for (let slot = from; slot < system.slots; slot += 1)
       this.#k.extendColumn(system.base.ledger, slot, this.#across, this.#places.address, this.#column.address, this.#lead, scratch);
+  }
+
+  /** Computes those blocks afresh, each by its path, whose largest past trace passes `limit` times the present one, when they have no more
+   *  than `most` unknowns together; the kept column is given up then. The numbers must be current.  @returns whether none is left. */
+  renewSuspects(system: System, limit: number, most: number): boolean {
+    if (this.ratio <= limit) return true;
+    const k = this.#k;
+    const room = Math.min(most, system.slots) + 1;
+    const list = system.scratch(4 * room);
+    const count = k.suspectStates(
+      system.base.ledger,
+      this.#arrivals.address,
+      this.#blocks.address,
+      this.#largest.address,
+      limit,
+      list,
+      room,
+    );
+    if (count >= room) return false;
+    const ranks = copyInts(list, count);
+    const arrivals = copyInts(this.#arrivals.address, system.slots);
+    const slots = Array.from(ranks, (rank) => arrivals[rank]!);
+    if (slots.reduce((sum, slot) => sum + system.dimensionAt(slot), 0) > most) return false;
+    eachMarginal(system, slots, (s, block) => {
+      const d = system.dimensionAt(slots[s]!);
+      let trace = 0;
+      for (let j = 0; j < d; j += 1) trace += block[j * (d + 1)]!;
+      writeFloats(this.#blockAddress(slots[s]!), block);
+      writeFloats(this.#largest.address + 8 * ranks[s]!, [trace]);
+    });
+    this.error = Math.max(this.error, system.bound());
+    this.ratio = limit;
+    this.#columnState = -1;
+    return true;
   }
 
   #placeOf(slot: number): Int32Array {

@@ -134,7 +134,7 @@ test("a solution read before the marginals is read again after them, though they
   const estimate = new Estimate({ track: "all" });
   let newBases = 0;
   feed(stream, estimate, (s) => {
-    if (s % 9 !== 0) return;
+    if (s % 60 !== 59) return; // so much is owed then that all afresh is cheaper
     const before = estimate.solution();
     const { ledgerBytes } = estimate.statistics;
     estimate.marginals();
