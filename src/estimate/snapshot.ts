@@ -21,7 +21,7 @@ import type { CheckedMeasurement, StateId } from "./rows.js";
 import type { WhitenedRows } from "./whitened.js";
 
 const MAGIC = "SGMT";
-const VERSION = 1;
+const VERSION = 2;
 const VERSION_AT = 4;
 const LENGTH_AT = 8;
 const TEXT_LENGTH_AT = 16;
