@@ -199,6 +199,11 @@ export class Adjustment {
     return factsOf(this.#state(name));
   }
 
+  /** Readings held, those that wait for the next `solve` included. */
+  get readingCount(): number {
+    return this.#readings.size;
+  }
+
   /** Every reading that counts, in order: its residual (measured minus predicted) at the present values and its robust weight. */
   *readings(): Generator<{
     key: ReadingKey;
