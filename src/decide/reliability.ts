@@ -59,7 +59,7 @@ export function reliability(
   }
   const weakest = uncontrolled.length > 0 ? 0 : controlled.at(-1)!.redundancy;
   const verdict = gradeOf(weakest);
-  const found = [...minimalDetectableBias].map(inWords).join(", ");
+  const found = [...minimalDetectableBias].map((bias) => inWords(bias)).join(", ");
   return {
     redundancy,
     level,

@@ -29,6 +29,9 @@ export function varianceFactorTest(
   const upper = distribution.sf(weightedSquares);
   const varianceFactor = weightedSquares / redundancy;
   const verdict = weightedSquares > threshold ? "more than stated" : weightedSquares < lowerThreshold ? "less than stated" : "as stated";
+  // With many readings the usual range is narrow about 1, and three digits would not tell its ends apart.
+  const width = Math.sqrt(threshold / redundancy) - Math.sqrt(lowerThreshold / redundancy);
+  const written = (factor: number) => inWords(Math.sqrt(factor), 3 + Math.max(0, Math.ceil(-Math.log10(width)) - 1));
   const meaning = {
     "as stated": "chance alone explains it",
     "more than stated": "look for a blunder, an effect left out of the model, or standard deviations stated too small",
@@ -44,8 +47,8 @@ export function varianceFactorTest(
     probability: sides === "both" ? Math.min(1, 2 * Math.min(upper, distribution.cdf(weightedSquares))) : upper,
     varianceFactor,
     verdict,
-    because: `The readings scatter ${inWords(Math.sqrt(varianceFactor))} times as much as their standard deviations say, between ${inWords(
-      Math.sqrt(lowerThreshold / redundancy),
-    )} and ${inWords(Math.sqrt(threshold / redundancy))} times is usual (all but ${percent(level)} of the time): ${meaning}.`,
+    because: `The readings scatter ${written(varianceFactor)} times as much as their standard deviations say, between ${written(
+      lowerThreshold / redundancy,
+    )} and ${written(threshold / redundancy)} times is usual (all but ${percent(level)} of the time): ${meaning}.`,
   };
 }

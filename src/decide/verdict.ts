@@ -25,8 +25,8 @@ export function upperTest(statistic: number, distribution: Distribution, level: 
   return { statistic, distribution: name, degreesOfFreedom, level, threshold, probability: distribution.sf(statistic) };
 }
 
-/** Three significant digits, without a string of zeros at either end. */
-export const inWords = (value: number): string => String(Number(value.toPrecision(3)));
+/** Three significant digits unless told otherwise, without a string of zeros at either end. */
+export const inWords = (value: number, digits = 3): string => String(Number(value.toPrecision(digits)));
 
 /** A probability as percent with two significant digits. */
 export const percent = (probability: number): string => `${Number((100 * probability).toPrecision(2))} %`;

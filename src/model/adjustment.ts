@@ -199,6 +199,11 @@ export class Adjustment {
     return factsOf(this.#state(name));
   }
 
+  /** Readings held, those that wait for the next `solve` included. */
+  get readingCount(): number {
+    return this.#readings.size;
+  }
+
   /** Every reading that counts, in order: its residual (measured minus predicted) at the present values and its robust weight. */
   *readings(): Generator<{
     key: ReadingKey;
@@ -254,19 +259,22 @@ export class Adjustment {
     if (iterations.length >= this.#maximumIterations)
       throw noConvergence("NOT_CONVERGED", `The adjustment has not converged in ${iterations.length} iterations`, this.#readings.values());
     this.#estimate.commit();
-    const trial = new Map<AdjustedState, Float64Array>();
+    const tried: AdjustedState[] = [];
+    const touched = new Set<AdjustedReading>();
     for (const state of this.#states.values()) {
       if (state.id === undefined) continue;
       const offset = this.#estimate.solution(state.id);
-      if (offset.some((number, k) => number !== state.offset[k])) trial.set(state, offset);
+      if (offset.every((number, k) => number === state.offset[k])) continue;
+      state.try(offset);
+      tried.push(state);
+      for (const reading of state.readings) touched.add(reading);
     }
-    const touched = new Set([...trial.keys()].flatMap((state) => [...state.readings]));
-    const fits = new Map<AdjustedReading, Fit>();
+    const fits: [AdjustedReading, Fit][] = [];
     let [costBefore, costAfter] = [0, 0];
     let holds = true;
     for (const reading of touched) {
-      const fit = reading.fit(trial);
-      fits.set(reading, fit);
+      const fit = reading.fit(this.#tolerance);
+      fits.push([reading, fit]);
       costBefore += reading.cost;
       costAfter += fit.cost;
       holds &&= !this.#isStale(reading, fit);
@@ -277,18 +285,19 @@ export class Adjustment {
     const accepted = strength > 0 ? costAfter < costBefore : holds || costAfter <= costBefore + level;
     let relinearized: number;
     if (accepted) {
-      for (const [state, offset] of trial) state.moveTo(offset);
-      const recentred = this.#recentre(trial.keys());
+      for (const state of tried) state.settle();
+      const recentred = this.#recentre(tried);
       for (const [reading, fit] of fits) reading.cost = fit.cost;
       relinearized = this.#relinearize(fits, (reading, fit) => recentred.has(reading) || this.#isStale(reading, fit));
       damping.weaken(this.#states.values());
     } else {
+      for (const state of tried) state.drop();
       // Before steps are shortened, models made elsewhere are made here.
       relinearized = this.#relinearize(fits, (reading) => !reading.isFresh);
       if (relinearized === 0 && !damping.strengthen(this.#states.values()))
         throw noConvergence("DIVERGED", "No step makes the readings fit better, however short", this.#readings.values());
     }
-    const iteration = { costBefore, costAfter, accepted, damping: strength, movedStates: trial.size, relinearized };
+    const iteration = { costBefore, costAfter, accepted, damping: strength, movedStates: tried.length, relinearized };
     iterations.push(iteration);
     this.#onIteration?.(iteration);
     return accepted && holds && strength === 0 && relinearized === 0;
@@ -309,7 +318,7 @@ export class Adjustment {
   }
 
   /** New linear models, made at the present values, for the readings that `wanted` picks. @returns how many. */
-  #relinearize(fits: ReadonlyMap<AdjustedReading, Fit>, wanted: (reading: AdjustedReading, fit: Fit) => boolean): number {
+  #relinearize(fits: Iterable<[AdjustedReading, Fit]>, wanted: (reading: AdjustedReading, fit: Fit) => boolean): number {
     let count = 0;
     for (const [reading, fit] of fits) {
       if (!wanted(reading, fit)) continue;

@@ -1,5 +1,5 @@
 // `sigmatide assess` and `sigmatide demo` as they are installed: build/command.mjs in a process of its own.
-import { type SpawnSyncReturns, spawnSync } from "node:child_process";
+import { type SpawnSyncReturns, spawn, spawnSync } from "node:child_process";
 import { existsSync, mkdtempSync, readdirSync, readFileSync, rmSync, writeFileSync } from "node:fs";
 import { tmpdir } from "node:os";
 import { join } from "node:path";
@@ -8,6 +8,7 @@ import { afterAll, beforeAll, describe, expect, test } from "vitest";
 import { progressOn } from "../../src/cli/progress.js";
 import { parseAmount, UnitWriter } from "../../src/cli/units.js";
 import { quayMonitoring } from "../../src/demo/monitoring.js";
+import { LogWriter } from "../../src/log/write.js";
 
 const command = fileURLToPath(new URL("../../build/command.mjs", import.meta.url));
 const run = (...words: string[]): SpawnSyncReturns<string> =>
@@ -220,6 +221,43 @@ describe("bad options end with exit code 2 and say what to write", () => {
     expect(status).toBe(2);
     expect(stderr).toMatch(/cannot stat .*none\.jsonl \(ENOENT\)/);
   });
+});
+
+test("a log whose network would not fit into memory is refused with what to do; forgetting states makes it fit", () => {
+  const chain = (forgets: boolean) => {
+    const lines = ['{"state": "P0", "kind": "height", "value": 0, "fixed": true}'];
+    for (let k = 1; k <= 1500; k++) {
+      lines.push(`{"state": "P${k}", "kind": "height"}`);
+      for (let again = 0; again < 20; again++)
+        lines.push(`{"reading": "height-difference", "states": ["P${k - 1}", "P${k}"], "value": 1, "standardDeviations": 0.001}`);
+      if (forgets && k > 1) lines.push(`{"forget": ["P${k - 1}"]}`);
+    }
+    return `${lines.join("\n")}\n`;
+  };
+  const assessed = (forgets: boolean) =>
+    spawnSync(process.execPath, ["--max-old-space-size=64", command, "assess", "-"], { encoding: "utf8", input: chain(forgets) });
+  const { status, stderr } = assessed(false);
+  expect(status).toBe(2);
+  expect(stderr).toMatch(/^sigmatide: line \d+: the network has come to .* readings[\s\S]*"forget" lines[\s\S]*--max-old-space-size=\d+/);
+  const fits = assessed(true);
+  expect(fits.status).toBe(0);
+  // 1 500 steps of 1 m, each the mean of 20 runs of 1 mm
+  expect(fits.stdout).toMatch(/^P1500 +1500\.0000 +0\.00866/m);
+});
+
+test("an interrupt leaves no page or a whole one, and nothing beside it", async () => {
+  const writer = new LogWriter();
+  const log = logFile("long.jsonl", Array.from(quayMonitoring().entries, (entry) => `${writer.line(entry)}\n`).join(""));
+  for (const delay of [50, 600, 1500]) {
+    const page = join(folder, `interrupted-${delay}.html`);
+    const child = spawn(process.execPath, [command, "assess", log, "--report", page], { stdio: "ignore" });
+    const timer = setTimeout(() => child.kill("SIGINT"), delay);
+    await new Promise((resolve) => child.once("close", resolve));
+    clearTimeout(timer);
+    if (existsSync(page)) expect(readFileSync(page, "utf8").endsWith("</html>\n")).toBe(true);
+    else expect(child.signalCode).toBe("SIGINT");
+  }
+  expect(readdirSync(folder).filter((name) => name.includes(".part"))).toEqual([]);
 });
 
 test("the README's log is assessed: M comes to (72, 21)", () => {

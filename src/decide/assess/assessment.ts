@@ -53,16 +53,15 @@ export function assess(network: Network, options: AssessmentOptions = {}): Asses
   const pairs = between.map((pair) => relativePrecision(network, pair, { confidence, limits }));
   const worst = states.filter(({ quantity }) => quantity === states[0]!.quantity).slice(0, explained);
   const failing = [...states, ...pairs].filter(({ tolerance }) => tolerance?.verdict === "fails the limit").length;
-  let [fixed, readings] = [0, 0];
+  let fixed = 0;
   for (const state of adjustment.states()) if (state.fixed) fixed += 1;
-  for (const _ of adjustment.readings()) readings += 1;
   return {
     confidence,
     counts: {
       states: states.length,
       fixed,
       unknowns: states.reduce((sum, { kind }) => sum + stateKinds[kind].dimension, 0),
-      readings: readings + (setAsideSuspects ? suspects.length : 0),
+      readings: adjustment.readingCount + (setAsideSuspects ? suspects.length : 0),
     },
     globalTest,
     globalTestWithoutSuspects,

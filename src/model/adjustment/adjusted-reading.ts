@@ -8,9 +8,6 @@ import type { AdjustedState } from "./adjusted-state.js";
 import type { Linearization, LinearMeasurement } from "./estimate-like.js";
 import { type Whiten, whitener } from "./whiten.js";
 
-/** Offsets of states that are being tried; the others stand where they are. */
-export type Trial = ReadonlyMap<AdjustedState, Float64Array>;
-
 /** How a reading fits a trial, lengths in standard deviations of the reading. */
 export interface Fit {
   /** Twice its loss: the weighted square of its residual, if no robust weight bends it. */
@@ -20,8 +17,15 @@ export interface Fit {
   readonly residual: number;
   /** How far the linear model's residual is off. */
   readonly linearizationError: number;
-  /** How far its Jacobian is off, each unknown in what it would be unsure by itself. */
+  /** How far its Jacobian is off, each unknown in what it would be unsure by itself. Infinite when the residual was off already. */
   readonly jacobianChange: number;
+}
+
+/** Numbers of one reading on their way: fits are many, and hold no arrays of their own. */
+let scratch = new Float64Array(16);
+function room(length: number): Float64Array {
+  if (scratch.length < length) scratch = new Float64Array(2 * length);
+  return scratch;
 }
 
 const impossible: Fit = {
@@ -50,8 +54,8 @@ export class AdjustedReading {
   #model: Linearization = { jacobians: [], residual: new Float64Array() };
   /** Where the model was made. */
   #offsetsWhenMade: Float64Array[] = [];
-  /** What it has added to the information of its free states. */
-  #information: Float64Array[] = [];
+  /** Whether the model is part of its free states' information. */
+  #informs = false;
 
   constructor(
     reading: Reading<string | ReadingKind>,
@@ -61,7 +65,7 @@ export class AdjustedReading {
   ) {
     this.reading = reading;
     this.states = states;
-    this.freeStates = states.filter(({ fixed }) => !fixed);
+    this.freeStates = states.some(({ fixed }) => fixed) ? states.filter(({ fixed }) => !fixed) : states;
     this.#form = form;
     this.#robust = robust;
     this.#whiten = whitener(reading);
@@ -74,7 +78,11 @@ export class AdjustedReading {
 
   /** Measured minus predicted at the present values. */
   residual(): Float64Array {
-    return this.#residual(this.states.map((state) => state.now()));
+    return this.#residual(this.#now());
+  }
+
+  #now(): StateAt[] {
+    return this.states.map((state) => state.now());
   }
 
   #residual(states: readonly StateAt[]): Float64Array {
@@ -83,14 +91,11 @@ export class AdjustedReading {
 
   /** The linear model at the present values, and the residual there. */
   modelHere(): { model: Linearization; residual: Float64Array } {
-    const at = this.states.map((state) => state.now());
+    const at = this.#now();
     const residual = this.#residual(at);
-    const jacobians = this.#jacobians(
-      at,
-      this.states.map(({ offset }) => offset),
-    );
+    const jacobians = this.#jacobians(at, false);
     const atOrigin = residual.slice();
-    for (const [k, state] of this.freeStates.entries()) addProduct(atOrigin, jacobians[k]!, state.offset, 1);
+    for (let k = 0; k < jacobians.length; k++) addProduct(atOrigin, jacobians[k]!, this.freeStates[k]!.offset, residual.length);
     return { model: { jacobians, residual: atOrigin }, residual };
   }
 
@@ -112,18 +117,15 @@ export class AdjustedReading {
   linearize(): Linearization {
     const { model, residual } = this.modelHere();
     const { jacobians, residual: atOrigin } = model;
-    this.#model = model;
-    this.#offsetsWhenMade = this.states.map(({ offset }) => offset);
     const { cost, weight } = this.#assess(residual);
     if (!Number.isFinite(cost)) throw this.#notFinite(residual);
+    this.leave();
+    this.#model = model;
+    this.#offsetsWhenMade = this.states.map(({ offset }) => offset);
     this.cost = cost;
     this.weight = weight;
-    this.leave();
-    this.#information = jacobians.map((jacobian, k) => {
-      const squares = this.#columnSquares(jacobian, this.freeStates[k]!.kind.dimension).map((square) => square * weight);
-      for (const [j, square] of squares.entries()) this.freeStates[k]!.information[j]! += square;
-      return squares;
-    });
+    this.#inform(1);
+    this.#informs = true;
     const scale = Math.sqrt(weight);
     const scaled = (numbers: Float64Array) => numbers.map((number) => number * scale);
     return weight === 1 ? this.#model : { jacobians: jacobians.map(scaled), residual: scaled(atOrigin) };
@@ -131,64 +133,97 @@ export class AdjustedReading {
 
   /** Takes its part out of its states' information. */
   leave(): void {
-    for (const [k, squares] of this.#information.entries())
-      for (const [j, square] of squares.entries()) {
-        const { information } = this.freeStates[k]!;
-        information[j] = Math.max(0, information[j]! - square);
-      }
-    this.#information = [];
+    if (this.#informs) this.#inform(-1);
+    this.#informs = false;
   }
 
-  /** How it fits at trial offsets. A trial where it cannot be predicted fits infinitely badly. */
-  fit(trial: Trial): Fit {
-    const offsets = this.states.map((state) => trial.get(state) ?? state.offset);
-    const at = this.states.map((state, k) => (state.fixed ? state.now() : state.at(offsets[k]!)));
+  /** Adds what the model tells of each unknown by itself to its states' information, or takes it out. */
+  #inform(sign: 1 | -1): void {
+    const { jacobians } = this.#model;
+    for (let k = 0; k < jacobians.length; k++) {
+      const { information } = this.freeStates[k]!;
+      for (let j = 0; j < information.length; j++) {
+        const square = this.weight * this.#columnSquare(jacobians[k]!, information.length, j);
+        information[j] = Math.max(0, information[j]! + sign * square);
+      }
+    }
+  }
+
+  /**
+   * How it fits where its states are tried. A trial where it cannot be predicted fits infinitely badly.
+   * @param tolerance of the linear model's residual: when it is off by more, the Jacobian is not looked at.
+   */
+  fit(tolerance: number): Fit {
+    const at = this.states.map((state) => state.tried());
     try {
       const residual = this.#residual(at);
-      const off = residual.map((number, k) => number - this.#model.residual[k]!);
-      const free = offsets.filter((_, k) => !this.states[k]!.fixed);
-      for (const [k, offset] of free.entries()) addProduct(off, this.#model.jacobians[k]!, offset, 1);
-      const wrapped = off.map((number, k) => (this.#form.rowQuantities[k] === "angle" ? wrapAngle(number) : number));
-      return {
-        ...this.#assess(residual),
-        linearizationError: Math.hypot(...this.#whiten(wrapped)),
-        jacobianChange: this.#jacobianChange(this.#jacobians(at, offsets)),
-      };
+      const linearizationError = this.#linearizationError(residual);
+      const jacobianChange = linearizationError <= tolerance ? this.#jacobianChange(this.#jacobians(at, true)) : Number.POSITIVE_INFINITY;
+      const { cost, weight, residual: length } = this.#assess(residual);
+      return { cost, weight, residual: length, linearizationError, jacobianChange };
     } catch (error) {
       if (error instanceof SigmatideError) return impossible;
       throw error;
     }
   }
 
+  #linearizationError(residual: Float64Array): number {
+    const rows = residual.length;
+    const off = room(rows);
+    const { jacobians, residual: atOrigin } = this.#model;
+    for (let i = 0; i < rows; i++) off[i] = residual[i]! - atOrigin[i]!;
+    for (let k = 0; k < jacobians.length; k++) addProduct(off, jacobians[k]!, this.freeStates[k]!.triedOffset(), rows);
+    for (let i = 0; i < rows; i++) if (this.#form.rowQuantities[i] === "angle") off[i] = wrapAngle(off[i]!);
+    return this.#whiteLength(off, rows);
+  }
+
   /** Jacobians on the free states at these values, in the offsets from their origins. */
-  #jacobians(at: readonly StateAt[], offsets: readonly Float64Array[]): Float64Array[] {
+  #jacobians(at: readonly StateAt[], tried: boolean): Float64Array[] {
     const all = this.#form.jacobians(at, this.reading.value, this.reading.setup);
-    return all.flatMap((jacobian, k) => (this.states[k]!.fixed ? [] : [multiplyChart(jacobian, this.states[k]!, offsets[k]!)]));
+    const free: Float64Array[] = [];
+    for (let k = 0; k < all.length; k++) {
+      const state = this.states[k]!;
+      if (!state.fixed) free.push(multiplyChart(all[k]!, state, tried ? state.triedOffset() : state.offset));
+    }
+    return free;
   }
 
   /** Over the free states, the largest change of the Jacobian since the model was made. */
   #jacobianChange(jacobians: readonly Float64Array[]): number {
     let largest = 0;
-    for (const [k, state] of this.freeStates.entries()) {
-      const change = jacobians[k]!.map((number, i) => number - this.#model.jacobians[k]![i]!);
-      const squares = this.#columnSquares(change, state.kind.dimension);
-      const sum = squares.reduce((total, square, j) => total + (square === 0 ? 0 : square / state.information[j]!), 0);
+    for (let k = 0; k < jacobians.length; k++) {
+      const { information } = this.freeStates[k]!;
+      let sum = 0;
+      for (let j = 0; j < information.length; j++) {
+        const square = this.#columnSquare(jacobians[k]!, information.length, j, this.#model.jacobians[k]!);
+        if (square !== 0) sum += square / information[j]!;
+      }
       largest = Math.max(largest, Math.sqrt(sum));
     }
     return largest;
   }
 
-  /** The squared length of each whitened column. */
-  #columnSquares(jacobian: Float64Array, columns: number): Float64Array {
+  /** The squared length of one whitened column, or of its difference from another. */
+  #columnSquare(jacobian: Float64Array, columns: number, j: number, minus?: Float64Array): number {
     const rows = jacobian.length / columns;
-    return Float64Array.from({ length: columns }, (_, j) => {
-      const column = this.#whiten(Float64Array.from({ length: rows }, (_, i) => jacobian[i * columns + j]!));
-      return column.reduce((sum, number) => sum + number * number, 0);
-    });
+    const column = room(rows);
+    for (let i = 0; i < rows; i++) column[i] = jacobian[i * columns + j]! - (minus ? minus[i * columns + j]! : 0);
+    return this.#whiteLength(column, rows) ** 2;
+  }
+
+  /** The length of the first `rows` numbers in standard deviations of the reading; they are whitened in place. */
+  #whiteLength(numbers: Float64Array, rows: number): number {
+    this.#whiten(numbers);
+    if (rows === 1) return Math.abs(numbers[0]!);
+    let sum = 0;
+    for (let i = 0; i < rows; i++) sum += numbers[i]! * numbers[i]!;
+    return Math.sqrt(sum);
   }
 
   #assess(residual: Float64Array): Pick<Fit, "cost" | "weight" | "residual"> {
-    const u = Math.hypot(...this.#whiten(residual));
+    const white = room(residual.length);
+    for (let i = 0; i < residual.length; i++) white[i] = residual[i]!;
+    const u = this.#whiteLength(white, residual.length);
     if (this.#robust === undefined) return { cost: u * u, weight: 1, residual: u };
     return { cost: 2 * this.#robust.loss(u), weight: this.#robust.weight(u), residual: u };
   }
@@ -217,8 +252,8 @@ function multiplyChart(jacobian: Float64Array, { kind }: AdjustedState, offset: 
   });
 }
 
-/** y += sign · A x, A row-major. */
-function addProduct(y: Float64Array, a: Float64Array, x: Float64Array, sign: 1 | -1): void {
+/** y += A x over the first `rows` rows, A row-major. */
+function addProduct(y: Float64Array, a: Float64Array, x: Float64Array, rows: number): void {
   const columns = x.length;
-  for (let i = 0; i < y.length; i++) for (let j = 0; j < columns; j++) y[i]! += sign * a[i * columns + j]! * x[j]!;
+  for (let i = 0; i < rows; i++) for (let j = 0; j < columns; j++) y[i]! += a[i * columns + j]! * x[j]!;
 }

@@ -20,6 +20,9 @@ export class AdjustedState {
   origin: Float64Array | undefined;
   offset: Float64Array;
   value: Float64Array | undefined;
+  /** Made once for all the readings on the state. */
+  #present: StateAt | undefined;
+  #tried: Place | undefined;
 
   constructor(name: string, kind: StateKind, fixed: boolean, value: Float64Array | undefined) {
     this.name = name;
@@ -32,22 +35,57 @@ export class AdjustedState {
 
   start(value: Float64Array): void {
     this.origin = value;
-    this.value = value;
-    this.offset = new Float64Array(this.kind.dimension);
-  }
-
-  /** The state at another offset from its origin. */
-  at(offset: Float64Array): StateAt {
-    return { name: this.name, kind: this.kind, value: this.kind.retract(this.origin!, offset) };
+    this.#stand({ offset: new Float64Array(this.kind.dimension), at: this.#stateAt(value) });
   }
 
   moveTo(offset: Float64Array): void {
-    this.offset = offset;
-    this.value = this.kind.retract(this.origin!, offset);
+    this.#stand(this.#place(offset));
+  }
+
+  /** Tries another offset: readings are fitted there until it is settled on or dropped. */
+  try(offset: Float64Array): void {
+    this.#tried = this.#place(offset);
+  }
+
+  settle(): void {
+    if (this.#tried) this.#stand(this.#tried);
+  }
+
+  drop(): void {
+    this.#tried = undefined;
   }
 
   /** At its present value. Only for a state that has one. */
   now(): StateAt {
-    return { name: this.name, kind: this.kind, value: this.value! };
+    return this.#present!;
   }
+
+  /** At the offset that is being tried; if none is, at its present value. */
+  tried(): StateAt {
+    return this.#tried?.at ?? this.#present!;
+  }
+
+  triedOffset(): Float64Array {
+    return this.#tried?.offset ?? this.offset;
+  }
+
+  #place(offset: Float64Array): Place {
+    return { offset, at: this.#stateAt(this.kind.retract(this.origin!, offset)) };
+  }
+
+  #stateAt(value: Float64Array): StateAt {
+    return { name: this.name, kind: this.kind, value };
+  }
+
+  #stand({ offset, at }: Place): void {
+    this.offset = offset;
+    this.value = at.value;
+    this.#present = at;
+    this.#tried = undefined;
+  }
+}
+
+interface Place {
+  readonly offset: Float64Array;
+  readonly at: StateAt;
 }
