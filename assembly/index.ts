@@ -23,7 +23,10 @@ export {
   assemblyBegin, assemblyAdvance, assemblyProgress, assemblyRelease, assemblyOrder, assemblyColumnStart, assemblyRowIndex, assemblyValues,
   assemblyVector, assemblyStateOf,
 } from "./information/assemble";
-export { orderStates, orderVector, orderDiagonal } from "./information/slots";
+export {
+  rowListBegin, rowListAdvance, rowListProgress, rowListRelease, rowListRows, rowListStart, rowListColumn, rowListValues, rowListRight,
+} from "./information/rows";
+export { orderStates, orderVector, lowerDiagonal } from "./information/slots";
 export { analysisBegin, analysisAdvance, analysisProgress, analysisFinish, analysisFactorBytes, analysisRelease } from "./symbolic/analysis";
 export { releaseSymbolic as symbolicRelease } from "./symbolic/symbolic";
 export {
@@ -45,7 +48,7 @@ export {
 export { ledgerCreate, ledgerRenew, ledgerRelease } from "./ledger/ledger";
 export { addLeaf, dropLeaves } from "./ledger/leaves";
 export {
-  beginColumns, setRight, loadBlock, loadUnits, carryForward, columnValues, carryBack, carryBackTo, clearColumns, loadKept,
+  beginColumns, setRight, setTurned, loadBlock, loadUnits, carryForward, columnValues, carryBack, carryBackTo, clearColumns, loadKept,
   countAdded, solveEstimate,
 } from "./ledger/columns";
 export { enterRows, settleRows, withdrawEntered, dropRow } from "./ledger/rows";
@@ -58,7 +61,8 @@ export {
   addedGrowth, removedReach, removedGrowth, owedGrowth, innovationGrowth,
 } from "./ledger/facts";
 export { householderScratch, triangularize } from "./dense/householder";
-export { rowPlanCreate, rowPlanRelease } from "./symbolic/row-plan";
+export { rowPlanCreate, rowPlanRelease, rowPlanFlops } from "./symbolic/row-plan";
 export {
   orthogonalBytes, orthogonalBegin, orthogonalAdvance, orthogonalProgress, orthogonalRelease, orthogonalPivot, orthogonalSolution,
+  orthogonalTurned,
 } from "./factor/orthogonal";

@@ -36,7 +36,7 @@ export class ScaledCondition {
   estimate: f64;
 }
 
-/** Starts for a complete factor, which must stay; diagonal f64[n]: A's, elimination order, not kept. Null when memory runs out. */
+/** Starts for a complete factor, which must stay; diagonal f64[n]: A's, caller's numbering, not kept. Null when memory runs out. */
 export function scaledConditionBegin(factor: Factor, diagonal: usize): ScaledCondition | null {
   const s = factor.symbolic, n = s.n, address = allocateArray(1, 7);
   if (!address) return null;
@@ -52,7 +52,7 @@ export function scaledConditionBegin(factor: Factor, diagonal: usize): ScaledCon
   // entries of the same size, as badly scaled networks have them.
   let state: u32 = 2463534242;
   for (let k = 0; k < n; ++k) {
-    const root = Math.sqrt(f64At(diagonal, k));
+    const root = Math.sqrt(f64At(diagonal, i32At(s.order, k)));
     setF64(job.roots, k, root);
     for (let c = 0; c < COLUMNS; ++c) {
       state ^= state << 13;

@@ -34,7 +34,17 @@ export interface KernelExports {
   assemblyStateOf(job: number): number;
   orderStates(symbolic: number, stateOf: number, sizes: number, stateOfSlot: number, dimensions: number): void;
   orderVector(symbolic: number, x: number, y: number): void;
-  orderDiagonal(symbolic: number, columnStart: number, values: number, y: number): void;
+  lowerDiagonal(order: number, columnStart: number, values: number, diagonal: number): void;
+
+  rowListBegin(assembly: number): number;
+  rowListAdvance(list: number, budget: number): number;
+  rowListProgress(list: number): number;
+  rowListRelease(list: number): void;
+  rowListRows(list: number): number;
+  rowListStart(list: number): number;
+  rowListColumn(list: number): number;
+  rowListValues(list: number): number;
+  rowListRight(list: number): number;
 
   analysisBegin(
     order: number,
@@ -74,12 +84,14 @@ export interface KernelExports {
 
   rowPlanCreate(symbolic: number, rows: number, rowStart: number, column: number): number;
   rowPlanRelease(plan: number): void;
+  rowPlanFlops(plan: number): number;
   orthogonalBytes(plan: number): number;
   orthogonalBegin(factor: number, plan: number, values: number, right: number, squares: number): number;
   orthogonalAdvance(job: number, budget: number): number;
   orthogonalProgress(job: number): number;
   orthogonalPivot(job: number): number;
   orthogonalSolution(job: number, out: number): number;
+  orthogonalTurned(job: number, out: number): void;
   orthogonalRelease(job: number): void;
 
   scaledConditionBegin(factor: number, diagonal: number): number;
@@ -129,6 +141,7 @@ export interface KernelExports {
   addLeaf(ledger: number, dimension: number, count: number, parents: number, numbers: number, z: number): number;
   dropLeaves(ledger: number, slots: number): void;
   setRight(ledger: number, eta: number): number;
+  setTurned(ledger: number, y: number): void;
   beginColumns(ledger: number, columns: number): number;
   loadBlock(ledger: number, from: number, rows: number, slot: number, block: number): void;
   loadUnits(ledger: number, from: number, slot: number): void;

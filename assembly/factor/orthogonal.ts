@@ -303,3 +303,8 @@ export function orthogonalSolution(job: Orthogonal, out: usize): i32 {
   release(buffer);
   return OK;
 }
+
+/** The first n entries of Qᵀb into out f64[n], elimination order, of a complete elimination with a right-hand side: L⁻¹ Jᵀb. */
+export function orthogonalTurned(job: Orthogonal, out: usize): void {
+  for (let c = 0, n = job.factor.symbolic.n; c < n; ++c) setF64(out, c, f64At(job.turned, c) / job.rightScale);
+}

@@ -18,7 +18,7 @@ export function orderVector(s: Symbolic, x: usize, y: usize): void {
   for (let c = 0; c < s.n; ++c) setF64(y, c, f64At(x, i32At(s.order, c)));
 }
 
-/** y[c] := the diagonal entry of the unknown eliminated c-th, of a lower triangle by columns, the diagonal first in each. */
-export function orderDiagonal(s: Symbolic, columnStart: usize, values: usize, y: usize): void {
-  for (let c = 0; c < s.n; ++c) setF64(y, c, f64At(values, i32At(columnStart, i32At(s.order, c))));
+/** The diagonal f64[n] of a lower triangle by columns, the diagonal first in each. */
+export function lowerDiagonal(n: i32, columnStart: usize, values: usize, diagonal: usize): void {
+  for (let j = 0; j < n; ++j) setF64(diagonal, j, f64At(values, i32At(columnStart, j)));
 }

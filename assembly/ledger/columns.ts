@@ -107,6 +107,11 @@ export function setRight(l: Ledger, eta: usize): i32 {
   return OK;
 }
 
+/** Sets it as it is, y f64[base positions], elimination order. */
+export function setTurned(l: Ledger, y: usize): void {
+  memory.copy(l.y, y, <usize>l.basePositions << 3);
+}
+
 /** X := L⁻¹ X over the reach; f = K⁻¹ Vᵀ X; gram := A Σ Aᵀ, both triangles. */
 export function carryForward(l: Ledger): void {
   const k = l.columns;

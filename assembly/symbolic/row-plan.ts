@@ -99,6 +99,9 @@ export function rowPlanRelease(plan: RowPlan): void {
   release(changetype<usize>(plan));
 }
 
+/** Multiplications and additions predicted for the elimination. */
+export function rowPlanFlops(plan: RowPlan): f64 { return plan.flops; }
+
 /** Turns the entries' columns into places in their fronts. `local` i32[n] is workspace without requirement. */
 function placeEntries(plan: RowPlan, local: usize): void {
   const s = plan.symbolic;

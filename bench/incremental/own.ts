@@ -34,7 +34,9 @@ export class Own {
 
   /** Takes the order that an estimate's base would have. */
   constructor(information: Information) {
-    const base = runSteps(baseSteps(inKernel(information, this.#loan), QUERIES, Number.POSITIVE_INFINITY));
+    const base = runSteps(
+      baseSteps(inKernel(information, this.#loan), { queries: QUERIES, memoryLimit: Number.POSITIVE_INFINITY, route: "information" }),
+    );
     if (isSingular(base)) throw new Error(`the matrix of the step is singular at unknown ${base.unknown}`);
     const { blockSizes, values, vector } = information;
     this.#base = base;
@@ -111,6 +113,7 @@ function inKernel({ order, columnPointers, rowIndices, values, blockSizes, vecto
     rowIndices: loan.ints(rowIndices),
     values: loan.floats(values),
     vector: loan.floats(vector),
+    assembly: undefined,
     giveBack: () => {},
   };
 }

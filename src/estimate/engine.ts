@@ -3,12 +3,23 @@
 import { MemoryLimitError } from "../../bindings/errors.js";
 import { status } from "../../bindings/kernel.js";
 import { part, runSteps, type SlicedCall, type Steps } from "../../bindings/slices.js";
+import type { Route } from "../matrix/routes.js";
 import { IntList } from "../support/int-list.js";
 import { type Base, baseSteps, isSingular, type Singular } from "./base.js";
 import { boundOfBase, closedBound } from "./bound.js";
 import { assemblySteps } from "./information.js";
 import { type Leaf, splitLeaves } from "./leaf.js";
-import { backwardCost, carryingCost, inverseCost, keptLimit, pathCost, rebaseCost, rebasePays, subtractionSpoils } from "./policy.js";
+import {
+  backwardCost,
+  blocksCost,
+  carryingCost,
+  FIRST_PATH_SHARE,
+  keptLimit,
+  pathCost,
+  rebaseCost,
+  rebasePays,
+  subtractionSpoils,
+} from "./policy.js";
 import { countRows, type OwnedRows, System, type SystemEvent, type World } from "./system.js";
 import { type SavedTracked, Tracked } from "./tracked.js";
 import { findUndetermined } from "./undetermined.js";
@@ -51,8 +62,6 @@ export class SingularBatch extends Error {
   }
 }
 
-/** Entries of L on the path of a row, as a share of all, before the first row has been counted: as in nets under minimum degree. */
-const FIRST_PATH_SHARE = 0.05;
 /** States that may arrive in one commit as leaves; with more, a base is cheaper than so many rotations. */
 const MOST_LEAVES = 64;
 /** Rows between old states that one commit may bring into the ledger. */
@@ -67,6 +76,9 @@ const HARMLESS = 1e-8;
 
 /** Nanoseconds of work asked for in one go while a budget of time is spent: the most by which a slice may pass it. */
 const BACKGROUND_SLICE = 2e5;
+
+/** Marginals that a base expects to be asked for. */
+const QUERIES = 1000;
 
 interface Background {
   readonly steps: Steps<Base | Singular>;
@@ -86,24 +98,25 @@ export class Engine {
   #carried = 0;
   readonly #latencyBudget: number | undefined;
   readonly #memoryLimit: number;
+  readonly #route: Route;
   #refused = 1;
   /** What a row of the last commit took: the next one's prediction. */
   #flopsPerRow: number | undefined;
   #refusal: string | undefined;
   /** The loss of digits in the ledger at which a new base was last refused: it is asked for again when ten times that is lost. */
   #lossRefused = 0;
-  #queries = 1000;
   /** A new base being built while the old one answers. */
   #background: Background | undefined;
   /** The bound on blocks from the base alone. */
   #baseBound = Number.EPSILON;
 
   /** @param latencyBudget milliseconds of a commit beyond which a new base is built in slices; undefined: at once.
-   *  @param memoryLimit bytes that the factor of a base may take. */
-  constructor(dimensionOf: (state: number) => number, latencyBudget: number | undefined, memoryLimit: number) {
+   *  @param memoryLimit bytes that the factor of a base may take.  @param route by which bases are factored. */
+  constructor(dimensionOf: (state: number) => number, latencyBudget: number | undefined, memoryLimit: number, route: Route) {
     this.#dimensionOf = dimensionOf;
     this.#latencyBudget = latencyBudget;
     this.#memoryLimit = memoryLimit;
+    this.#route = route;
   }
 
   get isEmpty(): boolean {
@@ -170,7 +183,7 @@ export class Engine {
     try {
       this.#intoLedger(arriving, minus, split.leaves, track, column);
     } catch (error) {
-      if (!(error instanceof SingularBatch) || this.#hasFreeStates(world())) throw error;
+      if (!(error instanceof SingularBatch) || (this.#route === "information" && this.#hasFreeStates(world()))) throw error;
       return yield* this.#rebase(world(), track, "rounding has eaten what rows taken out of the ledger left", false);
     }
     const countedFlops = this.system.flops - flopsBefore;
@@ -182,7 +195,9 @@ export class Engine {
       this.tracked.valid = false;
       if (this.#hasFreeStates(world())) {
         this.#putBack(before);
-        throw new SingularBatch(undefined);
+        if (this.#route === "information") throw new SingularBatch(undefined);
+        // As far as an information matrix tells; reflected rows tell more.
+        return yield* this.#rebase(world(), track, "rows taken out have left hardly anything of what they made certain", false);
       }
     }
     const reasons: string[] = [];
@@ -380,7 +395,8 @@ export class Engine {
     const sizes = Int32Array.from(world.states, (state) => this.#dimensionOf(state));
     const base = yield* this.#baseOf(world, sizes);
     if (isSingular(base)) throw new SingularBatch(base);
-    if (base.pivotSpread > SUSPICIOUS_SPREAD && this.#hasFreeStates(world)) {
+    // Reflected rows have had their rank looked at, by what is left of the rows themselves.
+    if (base.route === "information" && base.pivotSpread > SUSPICIOUS_SPREAD && this.#hasFreeStates(world)) {
       base.free();
       throw new SingularBatch(undefined);
     }
@@ -400,7 +416,7 @@ export class Engine {
   /** Puts a new system in the place of the old one, unless it would be the worse of the two. */
   #adopt(next: System, track: boolean, because: string, carry: boolean, column: number): Outcome {
     const { base } = next;
-    const bound = boundOfBase(base.condition);
+    const bound = boundOfBase(base.condition, base.factorCondition);
     const old = this.#system;
     if (old && carry && bound > this.#mostOfNewBase() && old.slots > 0) {
       next.free();
@@ -420,7 +436,8 @@ export class Engine {
     this.#refused = 1;
     this.#lossRefused = 0;
     this.#refusal = undefined;
-    return { route: "rebase", because, predictedFlops: base.costs.flops, countedFlops: base.costs.flops };
+    const { eliminationFlops } = base.costs;
+    return { route: "rebase", because: `${because}; ${base.because}`, predictedFlops: eliminationFlops, countedFlops: eliminationFlops };
   }
 
   /** The bound that a new base may have beside the one there is. */
@@ -435,19 +452,20 @@ export class Engine {
       place.set(state, k, -1);
     });
     const information = yield* part(
-      assemblySteps(sizes, (state) => place.at(state), world.rows),
+      assemblySteps(sizes, (state) => place.at(state), world.rows, this.#route !== "information"),
       0,
       ASSEMBLY_SHARE,
     );
     try {
-      return yield* part(baseSteps(information, this.#queries, this.#memoryLimit), ASSEMBLY_SHARE, 1);
+      const options = { queries: QUERIES, memoryLimit: this.#memoryLimit, route: this.#route };
+      return yield* part(baseSteps(information, options), ASSEMBLY_SHARE, 1);
     } finally {
       information.giveBack();
     }
   }
 
   #catchUpIsCheaper(system: System, base: Base): boolean {
-    return backwardCost(this.tracked.owed(system) + 3, base.costs.nonzeros) < inverseCost(base.costs);
+    return backwardCost(this.tracked.owed(system) + 3, base.costs.nonzeros) < blocksCost(base.costs);
   }
 
   /** Brings tracked numbers up to date by the cheaper exact route.
@@ -459,15 +477,10 @@ export class Engine {
       if (!isCurrent) this.tracked.refresh(system, column);
       if (this.keptAreGood(tolerance) || this.#renewSuspects(column, Math.min(tolerance, keptLimit(this.baseBound)))) return;
     }
-    if (system.events.length > 0) {
-      if (!this.#renewedForReading(world)) {
-        // The old base is the more exact one, or the only one to be had: blocks from it, one by one.
-        this.tracked.fromLedger(this.system);
-        this.tracked.refresh(this.system, column);
-        return;
-      }
-    }
-    this.tracked.recompute(this.system);
+    // Where no new base is taken, the old one is the more exact one or the only one to be had: blocks from it, one by one.
+    const isBare = system.events.length === 0 || this.#renewedForReading(world);
+    if (isBare && !this.system.base.costs.blocksBySolves) this.tracked.recompute(this.system);
+    else this.tracked.fromLedger(this.system);
     this.tracked.refresh(this.system, column);
   }
 
@@ -476,7 +489,7 @@ export class Engine {
     const { system, tracked } = this;
     const { costs } = system.base;
     const catchUp = backwardCost(tracked.owed(system) + 3, costs.nonzeros);
-    const afresh = inverseCost(costs) + (system.events.length > 0 ? rebaseCost(costs, system.slots, system.slots) : 0);
+    const afresh = blocksCost(costs) + (system.events.length > 0 ? rebaseCost(costs, system.slots, system.slots) : 0);
     return tracked.valid && catchUp <= afresh;
   }
 
@@ -525,7 +538,7 @@ export class Engine {
     this.#system = system;
     for (const event of events) replay(system, event);
     this.tracked.restore(system, tracked);
-    this.#baseBound = boundOfBase(base.condition);
+    this.#baseBound = boundOfBase(base.condition, base.factorCondition);
     this.#carried = carried;
     this.#refused = refused;
     this.#lossRefused = lossRefused;

@@ -29,6 +29,8 @@ export interface KernelInformation {
   readonly rowIndices: number;
   readonly values: number;
   readonly vector: number;
+  /** The kernel's assembly with the rows still laid out, for orthogonal elimination; undefined when they were not kept. */
+  readonly assembly: number | undefined;
   giveBack(): void;
 }
 
@@ -38,11 +40,12 @@ const LAYING_SHARE = 0.4;
 const MEASUREMENT_TIME = 100;
 
 /** Sums up `rows` over the states 0 … sizes.length − 1; `place` gives each state id its number there. It holds kernel memory until it is
- *  given back.  Cost: O(pairs of states in one measurement), with counting sorts, and their block products. */
+ *  given back.  @param keepRows whether the rows stay laid out until then.  Cost: O(pairs of states in one measurement), with counting sorts, and their block products. */
 export function* assemblySteps(
   sizes: Int32Array,
   place: (state: number) => number,
   rows: readonly WhitenedRows[],
+  keepRows: boolean,
 ): Steps<KernelInformation> {
   const k = kernel();
   const what = "The information matrix";
@@ -83,12 +86,13 @@ export function* assemblySteps(
       rowIndices: k.assemblyRowIndex(job) >>> 0,
       values: k.assemblyValues(job) >>> 0,
       vector: k.assemblyVector(job) >>> 0,
-      giveBack: releaser(job, kept),
+      assembly: keepRows ? job : undefined,
+      giveBack: releaser(job, kept, input),
     };
     taken = true;
     return made;
   } finally {
-    input.giveBack();
+    if (!taken || !keepRows) input.giveBack();
     if (!taken) {
       if (job) k.assemblyRelease(job);
       kept.giveBack();
@@ -96,10 +100,11 @@ export function* assemblySteps(
   }
 }
 
-function releaser(job: number, kept: Loan): () => void {
+function releaser(job: number, kept: Loan, input: Loan): () => void {
   return () => {
     kernel().assemblyRelease(job);
     kept.giveBack();
+    input.giveBack();
   };
 }
 
@@ -165,7 +170,7 @@ class Layout implements SlicedCall {
 
 /** As `assemblySteps`, at once, and copied out of kernel memory. */
 export function assembleInformation(sizes: Int32Array, place: (state: number) => number, rows: readonly WhitenedRows[]): Information {
-  const made = runSteps(assemblySteps(sizes, place, rows));
+  const made = runSteps(assemblySteps(sizes, place, rows, false));
   try {
     const columnPointers = copyInts(made.columnPointers, made.order + 1);
     const nonzeros = columnPointers[made.order]!;

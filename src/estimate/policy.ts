@@ -27,11 +27,15 @@ const MEMORY_SHARE = 0.25;
 const MEMORY_FLOOR = 1 << 20;
 
 export interface BaseCosts {
-  /** Flops of the last factorization, entries of L, bytes of the factor. */
+  /** Flops of the factor by Cholesky, and of all that was eliminated for it, reflections included; entries of L, bytes of the factor. */
   readonly flops: number;
+  readonly eliminationFlops: number;
   readonly nonzeros: number;
   readonly bytes: number;
   readonly states: number;
+  /** Whether all blocks are read off by a forward solve each: the selected inverse takes differences, which lose κ in digits where solves
+   *  lose √κ, so that it would undo what an orthogonal elimination has kept. */
+  readonly blocksBySolves: boolean;
 }
 
 /** Nanoseconds that a new base would take now. */
@@ -39,7 +43,7 @@ export function rebaseCost(last: BaseCosts, states: number, measurements: number
   // The factor of a larger system grows about as its states to the power 1.5 (nested dissection of planar graphs; George 1973).
   const growth = last.states > 0 ? (states / last.states) ** 1.5 : 1;
   return (
-    growth * (last.flops * nanoseconds.factorFlop + last.nonzeros * nanoseconds.factorEntry) +
+    growth * (last.eliminationFlops * nanoseconds.factorFlop + last.nonzeros * nanoseconds.factorEntry) +
     states * nanoseconds.analysisState +
     measurements * nanoseconds.assembledMeasurement
   );
@@ -53,9 +57,14 @@ export function carryingCost(columns: number, ledgerEntries: number, leafNumbers
 /** Nanoseconds of a backward solve with `columns` columns over all of L. */
 export const backwardCost = (columns: number, nonzeros: number): number => columns * nonzeros * nanoseconds.solveEntry;
 
-/** Nanoseconds of the selected inverse: about 2.3 times its factor. */
-export const inverseCost = (base: BaseCosts): number =>
-  2.3 * (base.flops * nanoseconds.factorFlop + base.nonzeros * nanoseconds.factorEntry);
+/** Entries of L on the path of a row, as a share of all, before the first row has been counted: as in nets under minimum degree. */
+export const FIRST_PATH_SHARE = 0.05;
+
+/** Nanoseconds of all blocks afresh: by the selected inverse, about 2.3 times its factor, or by a path each. */
+export const blocksCost = (base: BaseCosts): number =>
+  base.blocksBySolves
+    ? base.states * FIRST_PATH_SHARE * base.nonzeros * nanoseconds.solveEntry
+    : 2.3 * (base.flops * nanoseconds.factorFlop + base.nonzeros * nanoseconds.factorEntry);
 
 /** Nanoseconds of one column carried forward along its path, which takes so many flops. */
 export const pathCost = (flops: number): number => flops * nanoseconds.pathFlop;

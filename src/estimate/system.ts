@@ -322,9 +322,10 @@ export class System {
 
   /** What rounding errors of blocks computed now are made of. Cost: the ledger's rows; after a removal, its removed rows cubed ÷ 6, once. */
   sources(): ErrorSources {
-    const { ledger, condition } = this.base;
+    const { ledger, condition, factorCondition } = this.base;
     this.#sources ??= {
       baseCondition: condition,
+      factorCondition,
       leafCondition: this.#leafCondition.value,
       addedGrowth: this.#k.addedGrowth(ledger),
       removedReach: this.#k.removedReach(ledger),

@@ -12,6 +12,7 @@ import { choleskySteps, factorRoomSteps } from "./factor-room.js";
 import { normalEquations } from "./normal-equations.js";
 import { type CheckedOptions, checkOptions, type FactorizeOptions, factorizeOptionNames } from "./options.js";
 import { residualOf, transposedProduct } from "./refinement.js";
+import { conditionText, LARGEST_LOSS, LARGEST_SQUARE, NO_DIGITS, type Route, routes } from "./routes.js";
 import type { SparseColumns } from "./sparse-columns.js";
 import { type WeightedRows, weightedRows } from "./weighted-rows.js";
 
@@ -37,22 +38,9 @@ export interface LeastSquares {
   readonly weightedSquares: number;
 }
 
-/** The estimate of condition × 2.2e-16, for JᵀWJ scaled to unit diagonal, from which the information matrix is not trusted with its factor. It bounds the
- *  relative error of the worst variance; on the bench's families that was 5 to 600 times smaller. */
-const LARGEST_LOSS = 1e-8;
-
-/** Rows whose condition × 2.2e-16, with columns of norm 1, reaches this determine some unknown by rounding noise alone. Measured: 0.74 or more on
- *  nets, patrols, helices, chains and grids without their priors and on 2 000 random difference networks; at most 0.01 on networks that are
- *  determined, even with weights over 30 orders of magnitude. */
-const NO_DIGITS = 1 / 16;
-
 /** A condition of JᵀWJ up to here is told well enough by its Cholesky factor, and far from that of rows without rank. */
 const KNOWN_CONDITION = 1e12;
 
-/** Largest squared norm of a column, and the reciprocal of the smallest: see orthogonalBegin in assembly/factor/orthogonal.ts. */
-const LARGEST_SQUARE = 2 ** 900;
-
-const routes = ["automatic", "information", "orthogonal"];
 const optionNames = [...factorizeOptionNames, "weights", "route"];
 
 /**
@@ -122,7 +110,7 @@ export function leastSquares(jacobian: SparseColumns, residual: ArrayLike<number
 interface CheckedRows {
   readonly rows: WeightedRows;
   readonly options: CheckedOptions;
-  readonly route: "automatic" | "information" | "orthogonal";
+  readonly route: Route;
 }
 
 function checkRows(of: string, jacobian: SparseColumns, options: LeastSquaresOptions, more: readonly string[]): CheckedRows {
@@ -174,8 +162,6 @@ function* rowSteps({ rows, options, route }: CheckedRows, residual?: Float64Arra
     if (!complete) room.free();
   }
 }
-
-const conditionText = (condition: number): string => `JᵀWJ scaled to unit diagonal has a condition of about ${condition.toExponential(1)}`;
 
 /** Cholesky of the matrix.  @throws {NotPositiveDefiniteError} */
 function* informationSteps(room: FactorParts, to: number): Steps<void> {

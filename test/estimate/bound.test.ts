@@ -110,7 +110,7 @@ const row = (states: StateId[], coefficients: number[], deviation: number): Meas
 
 /** Two heights known to a thousand and to one another within a thousandth: scaled, their information has a condition of 4e12. */
 function doubtful(options: EstimateOptions): { estimate: Estimate; measurements: MeasurementInput[]; states: StateId[] } {
-  const estimate = new Estimate(options);
+  const estimate = new Estimate({ route: "information", ...options });
   const states = [estimate.addState(1), estimate.addState(1)];
   const measurements = [row([states[0]!], [1], 1e3), row(states, [-1, 1], 1e-3)];
   for (const m of measurements) estimate.addMeasurement(m);
@@ -209,7 +209,7 @@ describe("reading all marginals for the first time while leaves and rows stand b
     ["would be worse", 1e-4, "a new base would be good to"],
     ["would not be definite", 1e-7, "a new base would not be definite in f64"],
   ])("stays with leaves and ledger when a new base %s, and says so", (_what, tie, refusal) => {
-    const world = grown(40, 1e2, tie, { onDoubt: "answer" });
+    const world = grown(40, 1e2, tie, { onDoubt: "answer", route: "information" });
     const { estimate, states } = world;
     const again = row([states[3]!, states[17]!], [-1, 1], tie);
     estimate.addMeasurement(again);

@@ -159,7 +159,7 @@ export class Pipeline {
 
   scaledCondition(budget = Number.POSITIVE_INFINITY): number {
     const { raw, matrix } = this;
-    const diagonal = this.keep(Float64Array.from(this.order(), (j) => matrix.values[matrix.columnPointers[j]!]!));
+    const diagonal = this.keep(Float64Array.from({ length: matrix.order }, (_, j) => matrix.values[matrix.columnPointers[j]!]!));
     const job = raw.scaledConditionBegin!(this.factor, diagonal);
     runSlices(
       (b) => raw.scaledConditionAdvance!(job, b),
