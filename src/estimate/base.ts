@@ -30,8 +30,6 @@ export interface Base {
   readonly condition: number;
   /** What rounding in the factor is multiplied by; see `ErrorSources`. */
   readonly factorCondition: number;
-  /** max Λ[j, j] ÷ L[j, j]²: how far elimination shrank a pivot, a lower bound on the condition of Λ scaled to unit diagonal. */
-  readonly pivotSpread: number;
   free(): void;
 }
 
@@ -99,7 +97,6 @@ interface Numbers {
   readonly route: Base["route"];
   readonly because: string;
   readonly condition: number;
-  readonly pivotSpread: number;
   /** f64[order], elimination order: L⁻¹ Jᵀ b; undefined: to be solved for. */
   readonly turned: number | undefined;
   readonly eliminationFlops: number;
@@ -135,11 +132,12 @@ function* numbersOf(
       if (route === "information" || !canReflect) return { unknown: failed - 1, pivot: k.factorPivot(factor) };
       instead = "since JᵀWJ is not safely positive definite in f64";
     } else {
-      const found = yield* part(conditionSteps(order, factor, diagonal), trial * (1 - CONDITION_SHARE), trial);
-      const byCholesky = { ...found, route: "information", turned: undefined, eliminationFlops: flops } as const;
+      const condition = yield* part(conditionSteps(order, factor, diagonal), trial * (1 - CONDITION_SHARE), trial);
+      const byCholesky = { condition, route: "information", turned: undefined, eliminationFlops: flops } as const;
+      const why = conditionText(condition);
+      const isSafe = route === "automatic" && condition * Number.EPSILON <= LARGEST_LOSS;
       if (route === "information") return { ...byCholesky, because: "information route, as asked for" };
-      const why = conditionText(found.condition);
-      if (found.condition * Number.EPSILON <= LARGEST_LOSS) return { ...byCholesky, because: `information route, since ${why}` };
+      if (isSafe) return { ...byCholesky, because: `information route, since ${why}` };
       if (!canReflect) return { ...byCholesky, because: "information route, since squared columns of the rows pass what reflections bear" };
       instead = `since ${why}`;
     }
@@ -147,24 +145,23 @@ function* numbersOf(
   const turned = loan.room(8 * order);
   const reflected = yield* part(reflectionSteps(assembly!, symbolic, factor, diagonal, turned), trial, 1 - CONDITION_SHARE);
   if ("unknown" in reflected) return reflected;
-  const found = yield* part(conditionSteps(order, factor, diagonal), 1 - CONDITION_SHARE, 1);
-  if (Math.sqrt(found.condition) * Number.EPSILON >= NO_DIGITS) {
+  const condition = yield* part(conditionSteps(order, factor, diagonal), 1 - CONDITION_SHARE, 1);
+  if (Math.sqrt(condition) * Number.EPSILON >= NO_DIGITS) {
     const unknown = k.weakestUnknown(factor, diagonal);
-    return { unknown, pivot: squares[unknown]! / found.pivotSpread };
+    return { unknown, pivot: squares[unknown]! / k.pivotSpread(factor, diagonal) };
   }
   const eliminationFlops = reflected.flops + (trial > 0 ? flops : 0);
-  return { ...found, route: "orthogonal", because: `orthogonal route, ${instead}`, turned, eliminationFlops };
+  return { condition, route: "orthogonal", because: `orthogonal route, ${instead}`, turned, eliminationFlops };
 }
 
-/** The condition of Λ scaled to unit diagonal, by the factor at hand. */
-function* conditionSteps(order: number, factor: number, diagonal: number): Steps<Pick<Numbers, "condition" | "pivotSpread">> {
+/** The condition of Λ scaled to unit diagonal, by the factor at hand. How far elimination shrank a pivot is a lower bound on it. */
+function* conditionSteps(order: number, factor: number, diagonal: number): Steps<number> {
   const k = kernel();
   let job = 0;
   try {
     job = addressOrThrow("The condition of a new base", k.scaledConditionBegin(factor, diagonal), 8 * 4 * order);
     yield { advance: (budget) => k.scaledConditionAdvance(job, budget), progress: () => k.scaledConditionProgress(job) };
-    const pivotSpread = k.pivotSpread(factor, diagonal);
-    return { condition: Math.max(k.scaledConditionResult(job), pivotSpread), pivotSpread };
+    return Math.max(k.scaledConditionResult(job), k.pivotSpread(factor, diagonal));
   } finally {
     if (job) k.scaledConditionRelease(job);
   }
@@ -172,7 +169,7 @@ function* conditionSteps(order: number, factor: number, diagonal: number): Steps
 
 function finish({ order, states, blockSizes, stateOf, vector }: KernelInformation, symbolic: number, factor: number, made: Numbers): Base {
   const k = kernel();
-  const { route, because, condition, pivotSpread, turned, eliminationFlops } = made;
+  const { route, because, condition, turned, eliminationFlops } = made;
   return withLoan("The ledger", (loan) => {
     const stateOfSlot = loan.room(4 * states);
     const dimensions = loan.room(4 * states);
@@ -199,7 +196,6 @@ function finish({ order, states, blockSizes, stateOf, vector }: KernelInformatio
       because,
       condition,
       factorCondition: route === "orthogonal" ? Math.sqrt(condition) : condition,
-      pivotSpread,
       costs: {
         flops: k.symbolicFlops(symbolic),
         eliminationFlops,

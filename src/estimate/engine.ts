@@ -68,8 +68,8 @@ const MOST_LEAVES = 64;
 const MOST_ROWS = 192;
 /** Removed rows that have made states weaker by this: what is left of one is good to 2e-16 × 1e8, or is rounding alone. */
 const SUSPICIOUS_LOSS = 1e8;
-/** A pivot that elimination has left this much smaller than its diagonal entry may be rounding alone: 500 ε. */
-const SUSPICIOUS_SPREAD = 1e13;
+/** From this condition on a pivot may be rounding alone: 1 ÷ 500 ε. */
+const SUSPICIOUS_CONDITION = 1e13;
 /** Bounds below this are never a reason to keep an old base: errors themselves are mostly a hundredth of their bounds. That of a heavy patrol
  *  passes it at some 10 000 poses. */
 const HARMLESS = 1e-8;
@@ -396,7 +396,7 @@ export class Engine {
     const base = yield* this.#baseOf(world, sizes);
     if (isSingular(base)) throw new SingularBatch(base);
     // Reflected rows have had their rank looked at, by what is left of the rows themselves.
-    if (base.route === "information" && base.pivotSpread > SUSPICIOUS_SPREAD && this.#hasFreeStates(world)) {
+    if (base.route === "information" && base.condition > SUSPICIOUS_CONDITION && this.#hasFreeStates(world)) {
       base.free();
       throw new SingularBatch(undefined);
     }

@@ -111,19 +111,36 @@ describe("a chain of 10 000 poses on one prior", () => {
     return variances;
   };
 
+  const expectRight = (estimate: Estimate): void => {
+    const blocks = estimate.marginals();
+    for (const [unknown, variance] of exactVariances().entries()) {
+      const found = blocks[9 * Math.floor(unknown / 3) + 4 * (unknown % 3)]!;
+      expect(Math.abs(found / variance - 1)).toBeLessThan(1e-9);
+    }
+    const { bound, condition } = estimate.health();
+    expect(bound).toBeLessThan(1e-6);
+    expect(condition).toBeGreaterThan(1e12);
+  };
+
   test.each(["all", "none"] as const)(
     "marginals from leaves agree with double-double to 1e-9, and no worse base takes their place, track %s",
     (track) => {
+      const estimate = new Estimate({ track, route: "information" });
+      feed(estimate, stream, measurements, () => {});
+      expectRight(estimate);
+      expect(estimate.health()).toMatchObject({ baseRoute: "information", refusal: expect.stringContaining("would be good to") });
+      estimate.dispose();
+    },
+  );
+
+  test.each(["all", "none"] as const)(
+    "a new base that an information matrix would not bear is made from the rows, none is refused, and marginals agree to 1e-9, track %s",
+    (track) => {
       const estimate = new Estimate({ track });
       feed(estimate, stream, measurements, () => {});
-      const blocks = estimate.marginals();
-      for (const [unknown, variance] of exactVariances().entries()) {
-        const found = blocks[9 * Math.floor(unknown / 3) + 4 * (unknown % 3)]!;
-        expect(Math.abs(found / variance - 1)).toBeLessThan(1e-9);
-      }
-      const { bound, condition } = estimate.health();
-      expect(bound).toBeLessThan(1e-6);
-      expect(condition).toBeGreaterThan(1e12);
+      expectRight(estimate);
+      expect(estimate.health()).toMatchObject({ baseRoute: "orthogonal", refusal: undefined });
+      expect(estimate.health().leaves).toBeLessThan(poses / 2);
       estimate.dispose();
     },
   );

@@ -18,30 +18,40 @@ import { Refined } from "../support/refined.js";
 beforeAll(initFacade);
 
 /** The whole thousand where it is quickest; elsewhere a share that still meets every kind of network. */
-const networks = kernelBuild === "plain" && !("window" in globalThis) ? 1000 : 100;
+const whole = kernelBuild === "plain" && !("window" in globalThis) ? 1000 : 100;
 
-describe.each(["all", "none"] as const)("random networks with weights up to 12 orders of magnitude apart, track %s", (track) => {
-  test(`the bound holds in every answer of ${networks}, over 12 commits of arrivals, withdrawals, replacements and forgotten states`, () => {
-    const broken: Comparison[] = [];
-    let answers = 0;
-    let sharp = 0;
-    let silent = 0;
-    for (let seed = 0; seed < networks; seed += 1) {
-      compareNetwork(seed, track, 12, (comparison) => {
+describe.each([
+  ["automatic", "all", whole],
+  ["automatic", "none", whole],
+  ["information", "all", whole],
+  ["information", "none", whole],
+  ["orthogonal", "all", whole / 4],
+  ["orthogonal", "none", whole / 4],
+] as const)(
+  "random networks with weights up to 12 orders of magnitude apart, bases by the %s route, track %s",
+  (route, track, networks) => {
+    test(`the bound holds in every answer of ${networks}, over 12 commits of arrivals, withdrawals, replacements and forgotten states`, () => {
+      const broken: Comparison[] = [];
+      let answers = 0;
+      let sharp = 0;
+      let silent = 0;
+      const take = (comparison: Comparison): void => {
         const { error, reported, before, after } = comparison;
         answers += 1;
         if (!(error <= Math.min(reported, before, after))) broken.push(comparison);
         if (error > 1e-4 * reported) sharp += 1;
         if (reported === Number.POSITIVE_INFINITY) silent += 1;
-      });
-    }
-    expect(broken).toEqual([]);
-    expect(answers).toBeGreaterThan(5 * networks);
-    // And it says something: nothing at all in less than an eighth, and in a third no more than four digits away from what was lost.
-    expect(sharp).toBeGreaterThan(answers / 3);
-    expect(silent).toBeLessThan(answers / 8);
-  });
-});
+      };
+      for (let seed = 0; seed < networks; seed += 1) compareNetwork(seed, track, 12, take, route);
+      expect(broken).toEqual([]);
+      expect(answers).toBeGreaterThan(5 * networks);
+      // And it says something. From information matrices: nothing at all in less than an eighth, and in a third no more than four digits away
+      // from what was lost. From rows: nothing at all in hardly any; what is lost is often next to nothing, so fewer come near it.
+      expect(sharp).toBeGreaterThan(answers / (route === "information" ? 3 : 6));
+      expect(silent).toBeLessThan(answers / (route === "information" ? 8 : 200));
+    });
+  },
+);
 
 describe.each([
   ["net", 600],

@@ -311,7 +311,13 @@ describe("restored estimates", () => {
   });
 
   test("keep options, names, and noise in its units; options given take their place", async () => {
-    const estimate = new Estimate({ track: "all", tolerance: Number.POSITIVE_INFINITY, onDoubt: "answer", latencyBudget: 1e6 }); // never met
+    const estimate = new Estimate({
+      track: "all",
+      tolerance: Number.POSITIVE_INFINITY,
+      onDoubt: "answer",
+      latencyBudget: 1e6,
+      route: "orthogonal",
+    }); // never met
     const state = estimate.addState(2, { name: "Quay corner µ" });
     const one = [
       [1, 0],
@@ -344,6 +350,7 @@ describe("restored estimates", () => {
       onDoubt: "answer",
       latencyBudget: 1e6,
       memoryLimit: Number.POSITIVE_INFINITY,
+      route: "orthogonal",
     });
     expect(decodeSnapshot(estimate.snapshot()).options.tolerance).toBe(Number.POSITIVE_INFINITY);
     expect(decodeSnapshot(early.snapshot()).states[0]).toEqual({ dimension: 2, name: "Quay corner µ", standing: "committed" });

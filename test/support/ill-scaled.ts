@@ -8,6 +8,7 @@ import {
   type StateId,
   UndeterminedError,
 } from "../../src/index.js";
+import type { Route } from "../../src/matrix/routes.js";
 import { random } from "../../src/support/random.js";
 import { EnvelopeCholesky } from "./envelope.js";
 import { ExactSums } from "./exact-twin.js";
@@ -58,15 +59,21 @@ export function exactBlocks(
 }
 
 /**
- * Feeds network `seed` and compares after each commit.
+ * Feeds network `seed` and compares after each commit, bases by `route`.
  * Standard deviations are 10 to a uniform power from −3 to 3, so that weights lie 12 orders of magnitude apart; in every fourth network
  * they stay within one order, in every other fourth each row is one of two kinds. Some noise is given as a matrix, some states are forgotten.
  */
-export function compareNetwork(seed: number, track: "all" | "none", commits: number, take: (comparison: Comparison) => void): void {
+export function compareNetwork(
+  seed: number,
+  track: "all" | "none",
+  commits: number,
+  take: (comparison: Comparison) => void,
+  route: Route = "automatic",
+): void {
   const r = random(seed);
   const pick = <T>(list: readonly T[]): T => list[r.below(list.length)]!;
   const power = (): number => (seed % 4 === 0 ? 0.5 * (r.uniform() - 0.5) : seed % 4 === 1 ? pick([-3, 3]) : 6 * (r.uniform() - 0.5));
-  const estimate = new Estimate({ track, onDoubt: "answer" });
+  const estimate = new Estimate({ track, onDoubt: "answer", route });
   if (track === "all" && r.uniform() < 0.5) estimate.track("all", { column: "newest" });
   let states: [id: StateId, dimension: number][] = [];
   let inForce = new Map<MeasurementId, MeasurementInput>();
