@@ -506,7 +506,7 @@ export class Engine {
     const ratio = limit / (4 * Math.max(tracked.error, system.bound()));
     if (!(ratio > 2)) return false;
     const path = pathCost(this.#flopsPerRow ?? 2 * FIRST_PATH_SHARE * costs.nonzeros);
-    const most = Math.floor((inverseCost(costs) + rebaseCost(costs, system.slots, system.slots)) / path);
+    const most = Math.floor((blocksCost(costs) + rebaseCost(costs, system.slots, system.slots)) / path);
     if (!tracked.renewSuspects(system, ratio, most)) return false;
     tracked.refresh(system, column);
     return this.trackedBound <= limit;

@@ -63,7 +63,7 @@ export const FIRST_PATH_SHARE = 0.05;
 /** Nanoseconds of all blocks afresh: by the selected inverse, about 2.3 times its factor, or by a path each. */
 export const blocksCost = (base: BaseCosts): number =>
   base.blocksBySolves
-    ? base.states * FIRST_PATH_SHARE * base.nonzeros * nanoseconds.solveEntry
+    ? base.states * pathCost(2 * FIRST_PATH_SHARE * base.nonzeros)
     : 2.3 * (base.flops * nanoseconds.factorFlop + base.nonzeros * nanoseconds.factorEntry);
 
 /** Nanoseconds of one column carried forward along its path, which takes so many flops. */
