@@ -116,6 +116,33 @@ describe("the route of a base is told, with its reason", () => {
   });
 });
 
+test("rows and blocks of zeros, states read in any order and by matrices of noise: both routes agree on marginals and solution", () => {
+  const answers = (["information", "orthogonal"] as const).map((route) => {
+    const r = random(5);
+    const estimate = new Estimate({ route });
+    const states = Array.from({ length: 30 }, (_, k) => [estimate.addState(1 + (k % 4)), 1 + (k % 4)] as const);
+    for (const [id, d] of states) {
+      const [other, e] = states[r.below(30)]!;
+      const jacobians = [d, e].map((n) =>
+        Float64Array.from({ length: (d + 1) * n }, (_, k) => (k < n || r.uniform() < 0.2 ? 0 : r.normal())),
+      );
+      const covariance = Array.from({ length: d + 1 }, (_, i) => Array.from({ length: d + 1 }, (__, j) => (i === j ? 2 : 0.5)));
+      const residual = Array.from({ length: d + 1 }, () => r.normal());
+      estimate.addMeasurement({ states: [other, id], jacobians: [jacobians[1]!, jacobians[0]!], residual, covariance });
+      const identity = Array.from({ length: d }, (_, i) => Array.from({ length: d }, (__, j) => (i === j ? 1 : 0)));
+      const weak = { residual: residual.slice(1), standardDeviations: new Float64Array(d).fill(3) };
+      estimate.addMeasurement({ states: [id], jacobians: [identity], ...weak });
+      const nothing = { residual: [7], standardDeviations: [1] };
+      estimate.addMeasurement({ states: [id], jacobians: [[new Float64Array(d)]], ...nothing });
+    }
+    expect(estimate.commit().because).toContain(`${route} route, as asked for`);
+    const found = [...estimate.marginals(), ...estimate.solution(), estimate.varianceFactor().weightedSquares, estimate.logDeterminant()];
+    estimate.dispose();
+    return found;
+  });
+  for (const [k, value] of answers[0]!.entries()) expect(Math.abs(answers[1]![k]! - value)).toBeLessThan(1e-11 * (1 + Math.abs(value)));
+});
+
 describe.each([1000, 10_000])("a chain of %i poses on one prior, all in one commit", (poses) => {
   const stream = chain(poses, { fixEvery: 0 });
   let variances: Float64Array | undefined;
