@@ -1,13 +1,12 @@
 // The kernel's exports: numbers and memory, nothing else.
 export {
-  allocate, release, setMemoryLimit, memoryLimit, memoryUsed, memoryPeak, resetMemoryPeak, memoryCapacity,
+  allocate, release, setMemoryLimit, memoryLimit, memoryUsed, memoryPeak, memoryCapacity,
 } from "./memory/heap";
 export function isFused(): bool { return ASC_FEATURE_RELAXED_SIMD; }
 export { blocksOf, releaseBlocks } from "./ordering/compress";
 export {
   orderingBegin, orderingAdvance, orderingProgress, orderingChosen, orderingPrediction, orderingFinish, orderingRelease,
 } from "./ordering/ordering";
-export { permuteGraph, releaseHalves } from "./symbolic/halves";
 export { eliminationTree, postorder } from "./symbolic/tree";
 export { columnCounts } from "./symbolic/counts";
 export { multiply } from "./dense/multiply";
@@ -30,7 +29,7 @@ export { orderStates, orderVector, lowerDiagonal } from "./information/slots";
 export { analysisBegin, analysisAdvance, analysisProgress, analysisFinish, analysisFactorBytes, analysisRelease } from "./symbolic/analysis";
 export { releaseSymbolic as symbolicRelease } from "./symbolic/symbolic";
 export {
-  symbolicOrder, symbolicNonzeros, symbolicFlops, symbolicSupernodes, symbolicBlocks, symbolicOrdering, symbolicBytes, factorBytes, inverseBytes,
+  symbolicOrder, symbolicNonzeros, symbolicFlops, symbolicSupernodes, symbolicOrdering, symbolicBytes, factorBytes, inverseBytes,
 } from "./symbolic/facts";
 export {
   factorCreate, factorRelease, factorBegin, factorAdvance, factorProgress, factorPivot, logDeterminant, pivotSpread, weakestUnknown,
@@ -40,7 +39,7 @@ export { inverseEntries } from "./solve/entries";
 export { inverseBlock } from "./solve/block";
 export { squaresBegin, squaresAdvance, squaresProgress, squaresRelease } from "./solve/squares";
 export { inverseBegin, inverseAdvance, inverseProgress, inverseRelease, inverseDiagonal } from "./inverse/selected-inverse";
-export { inverseOnMatrix, inverseOnFactor, inverseFactorColumns, factorEntries } from "./inverse/pattern";
+export { inverseOnMatrix, inverseFactorColumns, factorEntries } from "./inverse/pattern";
 export { reciprocalCondition } from "./condition";
 export {
   scaledConditionBegin, scaledConditionAdvance, scaledConditionProgress, scaledConditionResult, scaledConditionRelease,
@@ -51,7 +50,7 @@ export {
   beginColumns, setRight, setTurned, loadBlock, loadUnits, carryForward, columnValues, carryBack, carryBackTo, clearColumns, loadKept,
   countAdded, solveEstimate,
 } from "./ledger/columns";
-export { enterRows, settleRows, withdrawEntered, dropRow } from "./ledger/rows";
+export { enterRows, settleRows, dropRow } from "./ledger/rows";
 export {
   factorInnovation, scaleColumns, updateKept, takeColumn, followLeaf, extendColumn, blocksOfInverse, forgetPast,
   suspectStates,

@@ -112,8 +112,8 @@ export function assemblyAdvance(job: Assembly, budget: f64): i32 {
   while (job.phase != DONE) {
     if (left <= 0) return RUNNING;
     if (job.phase == PAIR) left = pairSome(job, left);
-    else if (job.phase == SORT) left = sortSome(job, left);
-    else if (job.phase == SPREAD) left = spreadSome(job, left);
+    else if (job.phase == SORT) left = sortSome(job, left, 0, job.high, job.highStart, job.byHigh, SPREAD);
+    else if (job.phase == SPREAD) left = sortSome(job, left, job.byHigh, job.low, job.lowStart, job.byLow, LAY);
     else if (job.phase == LAY) { if (!layPattern(job)) return OUT_OF_MEMORY; left -= UNITS_PAIR * <f64>(job.states + job.pairs); }
     else left = sumSome(job, left);
   }
@@ -161,31 +161,18 @@ function pairSome(job: Assembly, budget: f64): f64 {
   return left;
 }
 
-/** Pairs by their higher state. Starts move up: highStart[s + 1] ends as where the pairs of s end. */
-function sortSome(job: Assembly, budget: f64): f64 {
-  const to = min(job.pairs, job.at + 1 + <i32>min<f64>(budget / UNITS_PAIR, 1e9));
-  for (let p = job.at; p < to; ++p) {
-    const slot = job.highStart + (<usize>(i32At(job.high, p) + 1) << 2), place = load<i32>(slot);
-    setI32(job.byHigh, place, p);
-    store<i32>(slot, place + 1);
-  }
-  const left = budget - UNITS_PAIR * <f64>(to - job.at);
-  job.at = to;
-  if (to == job.pairs) turnTo(job, SPREAD);
-  return left;
-}
-
-/** Those by their lower state, the higher ones then ascending. */
-function spreadSome(job: Assembly, budget: f64): f64 {
+/** Some pairs, in the order of `from` (0: as listed), to `into` by their `key`; then comes phase `next`. Starts move up: start[s + 1] ends
+ *  as where the pairs of s end. */
+function sortSome(job: Assembly, budget: f64, from: usize, key: usize, start: usize, into: usize, next: i32): f64 {
   const to = min(job.pairs, job.at + 1 + <i32>min<f64>(budget / UNITS_PAIR, 1e9));
   for (let q = job.at; q < to; ++q) {
-    const p = i32At(job.byHigh, q), slot = job.lowStart + (<usize>(i32At(job.low, p) + 1) << 2), place = load<i32>(slot);
-    setI32(job.byLow, place, p);
+    const p = from ? i32At(from, q) : q, slot = start + (<usize>(i32At(key, p) + 1) << 2), place = load<i32>(slot);
+    setI32(into, place, p);
     store<i32>(slot, place + 1);
   }
   const left = budget - UNITS_PAIR * <f64>(to - job.at);
   job.at = to;
-  if (to == job.pairs) turnTo(job, LAY);
+  if (to == job.pairs) turnTo(job, next);
   return left;
 }
 

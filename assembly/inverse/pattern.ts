@@ -22,31 +22,6 @@ export function inverseOnMatrix(z: SelectedInverse, out: usize): void {
   }
 }
 
-/** Entry of the panels where L (and Z) holds row r, column c (elimination order, r ≥ c), or −1 when L has no such entry. */
-export function panelEntry(s: Symbolic, r: i32, c: i32): f64 {
-  const t = i32At(s.supernodeOf, c), first = i32At(s.first, t), end = i32At(s.first, t + 1);
-  const column = <f64>u32At(s.panel, t) + <f64>(c - first) * <f64>i32At(s.lead, t);
-  if (r < end) return column + <f64>(r - first);
-  let low = i32At(s.rowStart, t), high = i32At(s.rowStart, t + 1) - 1;
-  const start = low;
-  while (low <= high) {
-    const middle = (low + high) >> 1, row = i32At(s.rows, middle);
-    if (row == r) return column + <f64>(end - first + middle - start);
-    if (row < r) low = middle + 1; else high = middle - 1;
-  }
-  return -1;
-}
-
-/** out[k] = Z[rows[k], columns[k]] where L's pattern has the entry, NaN where not. Requires kept panels. Cost: a binary search each. */
-export function inverseOnFactor(z: SelectedInverse, rows: usize, columns: usize, count: i32, out: usize): void {
-  const s = z.factor.symbolic;
-  for (let k = 0; k < count; ++k) {
-    const i = i32At(s.place, i32At(rows, k)), j = i32At(s.place, i32At(columns, k));
-    const at = panelEntry(s, max(i, j), min(i, j));
-    setF64(out, k, at < 0 ? NaN : load<f64>(z.panels + (<usize>at << 3)));
-  }
-}
-
 /** All of Z that the panels hold, as the lower triangle by columns, rows ascending, caller's numbering:
  *  columnStart i32[n + 1], rowIndex i32[factorEntries], value f64[factorEntries].  OK or OUT_OF_MEMORY.
  *  Cost: two distributions of the entries, by row and then by column, so nothing is sorted. */

@@ -186,8 +186,7 @@ export function setMemoryLimit(bytes: f64): void {
 export function memoryLimit(): f64 { return <f64>limit; }
 /** Bytes in use, headers included. */
 export function memoryUsed(): f64 { return <f64>used; }
-/** The largest `memoryUsed` since `resetMemoryPeak`. */
+/** The largest `memoryUsed` so far. */
 export function memoryPeak(): f64 { return <f64>peak; }
-export function resetMemoryPeak(): void { peak = used; }
 /** Bytes that WebAssembly holds; it never shrinks. */
 export function memoryCapacity(): f64 { return <f64>memory.size() * 65536; }

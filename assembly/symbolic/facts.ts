@@ -9,8 +9,6 @@ export function symbolicNonzeros(s: Symbolic): f64 { return s.nonzeros; }
 /** Flops of the factorization: Σ over columns of L of (entries)². */
 export function symbolicFlops(s: Symbolic): f64 { return s.flops; }
 export function symbolicSupernodes(s: Symbolic): i32 { return s.supernodes; }
-/** States: blocks of unknowns with one pattern. */
-export function symbolicBlocks(s: Symbolic): i32 { return s.blocks; }
 /** How the order was found: one of the kinds of ordering/ordering.ts. */
 export function symbolicOrdering(s: Symbolic): i32 { return s.ordering; }
 /** Bytes of the tables. */

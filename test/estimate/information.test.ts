@@ -3,12 +3,12 @@ import fc from "fast-check";
 import { Matrix } from "ml-matrix";
 import { beforeAll, describe, expect, test } from "vitest";
 import { random } from "../../bench/families/random.js";
-import { kernel } from "../../bindings/loader.js";
 import { copyFloats, copyInts } from "../../bindings/memory.js";
 import { assembleInformation, assemblySteps } from "../../src/estimate/information.js";
 import type { WhitenedRows } from "../../src/estimate/whitened.js";
-import { memoryUsage, setMemoryLimit } from "../../src/index.js";
+import { memoryUsage } from "../../src/index.js";
 import { initFacade } from "../support/facade.js";
+import { refusedUntilThereIsRoom } from "../support/refused.js";
 
 beforeAll(initFacade);
 
@@ -106,24 +106,8 @@ describe("the information matrix of rows", () => {
 
   test("is refused wherever memory runs out, and nothing is held then", () => {
     const { sizes, rows } = network(3, 60, 400);
-    const { used, limit } = memoryUsage();
-    let refused = 0;
-    try {
-      for (let room = 0; ; room += 4000) {
-        setMemoryLimit(used + room);
-        try {
-          assembleInformation(sizes, place, rows);
-          break;
-        } catch (error) {
-          expect(error).toMatchObject({ code: "MEMORY_LIMIT" });
-          refused += 1;
-        }
-        expect(kernel().memoryUsed()).toBe(used);
-      }
-    } finally {
-      setMemoryLimit(limit);
-    }
-    expect(refused).toBeGreaterThan(5);
+    const { used } = memoryUsage();
+    expect(refusedUntilThereIsRoom(() => assembleInformation(sizes, place, rows), 4000)).toBeGreaterThan(5);
     expect(memoryUsage().used).toBe(used);
   });
 });

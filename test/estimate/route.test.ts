@@ -17,13 +17,13 @@ import {
   memoryUsage,
   OptionError,
   type StateId,
-  setMemoryLimit,
   UndeterminedError,
 } from "../../src/index.js";
 import { random } from "../../src/support/random.js";
 import { EnvelopeCholesky } from "../support/envelope.js";
 import { ExactAnswers, ExactSums } from "../support/exact-twin.js";
 import { errorOf, initFacade } from "../support/facade.js";
+import { refusedUntilThereIsRoom } from "../support/refused.js";
 
 beforeAll(initFacade);
 
@@ -354,25 +354,9 @@ describe("a base by the orthogonal route", () => {
   });
 
   test("is refused wherever memory runs out, and nothing is held then", () => {
-    const { used, limit } = memoryUsage();
+    const { used } = memoryUsage();
     const estimate = pending(chain(200, { fixEvery: 0 }), { route: "orthogonal" });
-    let refused = 0;
-    try {
-      for (let room = 0; ; room += 5000) {
-        setMemoryLimit(used + room);
-        try {
-          estimate.commit();
-          break;
-        } catch (error) {
-          expect(error).toMatchObject({ code: "MEMORY_LIMIT" });
-          refused += 1;
-        }
-        expect(kernel().memoryUsed()).toBe(used);
-      }
-    } finally {
-      setMemoryLimit(limit);
-    }
-    expect(refused).toBeGreaterThan(20);
+    expect(refusedUntilThereIsRoom(() => estimate.commit(), 5000)).toBeGreaterThan(20);
     expect(estimate.health().baseRoute).toBe("orthogonal");
     estimate.dispose();
     expect(memoryUsage().used).toBe(used);
