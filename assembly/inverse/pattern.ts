@@ -1,5 +1,4 @@
-/** Entries of a selected inverse by the caller's numbering: those of A's pattern, single ones on L's pattern, or all of L's pattern as
- *  compressed columns. */
+/** Entries of a selected inverse by the caller's numbering: those of A's pattern, or all of L's pattern as compressed columns. */
 import { allocateArray, release } from "../memory/heap";
 import { addI32, atF64, i32At, setF64, setI32, setU32, u32At } from "../memory/access";
 import { OK, OUT_OF_MEMORY } from "../memory/status";
